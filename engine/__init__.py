@@ -1,0 +1,6 @@
+"""Elastovox engine: pure functions from a design to what its loudspeaker does.
+
+Conventions, said once: SI units and radians; time dependence e^{+i omega t}; amplitudes are peak values; frequency in Hz is the leading
+axis of every result; the axis z points from the frame plane to the listener; volumes swept towards the listener are
+positive. Inputs and results are frozen dataclasses holding read-only arrays.
+"""
