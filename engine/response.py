@@ -26,19 +26,3 @@ class Response:
     rest: Equilibrium
     estimate_above: float      # Hz: above it the cone's depth makes the level an estimate (inf: nowhere)
     findings: tuple = ()       # of Finding
-
-
-@dataclass(frozen=True)
-class KeyFigures:
-    """The few numbers a design is judged by, SI units."""
-
-    pumping_frequency: float
-    first_break_up_frequency: float | None
-    mean_level_db: float             # mean of the level over log frequency in the band, estimate region included
-    ripple_db: float                 # standard deviation of the level about that mean
-    breakdown_ratio: float
-    least_stress: float
-    centre_height: float
-    largest_stroke: float
-    largest_stroke_frequency: float
-    band: tuple                      # (low, high) Hz
