@@ -1,0 +1,146 @@
+"""One visitor's session: watches the state, asks the worker, publishes the result, busy and the problem."""
+
+from dataclasses import dataclass
+from functools import partial
+
+import param
+
+from app import worker
+from app.state import DesignState
+
+
+@dataclass(frozen=True)
+class Problem:
+    """Why the plots show an earlier design: in words, and at which control."""
+
+    text: str
+    key: str | None      # "group.name" of the control that caused it
+    kind: str            # "invalid", "no rest state", "not converged", "unexpected", as in worker.Failure
+
+
+class Session(param.Parameterized):
+    """State in, results out. The last good overview stays when a later design has none.
+
+    Parameters
+    ----------
+    state : DesignState
+    document : bokeh.document.Document or None
+        Where results are shown; None publishes at once (tests, scripts).
+    updater : callable
+        Makes the access to the worker from (compute, publish); replaced in tests.
+    """
+
+    state = param.ClassSelector(class_=DesignState, constant=True)
+    overview = param.Parameter(doc="engine.summary.Overview of the last design that could be computed, None before the first")
+    held = param.Parameter(doc="engine.summary.Overview of the held design in the band shown, or None")
+    busy = param.Boolean(default=False, doc="whether a newer design than the one shown is being computed")
+    problem = param.ClassSelector(class_=Problem, allow_None=True, doc="why the newest design is not the one shown, or None")
+
+    def __init__(self, state, document=None, updater=None):
+        super().__init__(state=state)
+        self._document = document
+        self._closed = False
+        updater = updater or _shared_updater
+        self._shown = updater(self._publish)
+        self._grey = updater(self._publish_held)
+        self._watches = [state.param.watch(self._ask, ["design", "band", "invalid"], what="value"),
+                         state.param.watch(self._ask_held, ["held", "band"])]
+
+    def start(self):
+        """Ask for the first overview."""
+        self._ask()
+
+    def hold(self):
+        """Hold the design shown as the grey reference, or let the held one go."""
+        self.state.held = self.overview.design if self.state.held is None and self.overview is not None else None
+
+    def close(self):
+        """End with the visitor: nothing is computed or published for this session any more."""
+        self._closed = True
+        for watch in self._watches:
+            self.state.param.unwatch(watch)
+        self._shown.close()
+        self._grey.close()
+
+    def _ask(self, *events):
+        """Want the newest design; one that is invalid is a problem at once and leaves the plots."""
+        invalid = self.state.invalid
+        if invalid is not None:
+            self.problem = Problem(invalid.text, invalid.key, "invalid")
+        elif events and all(event.name == "invalid" for event in events) and self._is_shown():
+            self.problem = None
+        else:
+            self.busy = True
+            self._shown.want(self.state.design, self.state.band)
+
+    def _is_shown(self):
+        """Whether the overview is that of the state's design and band."""
+        shown = self.overview
+        return shown is not None and (shown.design, tuple(shown.band)) == (self.state.design, self.state.band)
+
+    def _ask_held(self, *_):
+        """Want the held design in the band shown."""
+        design, band = self.state.held, self.state.band
+        shown = self.overview
+        if design is None:
+            self.held = None
+        elif shown is not None and (shown.design, tuple(shown.band)) == (design, band):
+            self.held = shown
+        else:
+            self._grey.want(design, band)
+
+    def _publish(self, outcome):
+        """Take a result or a failure to the document."""
+        self._in_document(partial(self._take, outcome))
+
+    def _publish_held(self, outcome):
+        """Take the held design's result to the document."""
+        self._in_document(partial(self._take_held, outcome))
+
+    def _in_document(self, change):
+        """Run a change under the document's lock, or at once without a document."""
+        if self._closed:
+            return
+        if self._document is None:
+            change()
+        else:
+            self._document.add_next_tick_callback(change)
+
+    def _take(self, outcome):
+        """Publish result, problem and busy in one update."""
+        if self._closed:
+            return
+        values = {"busy": (self.state.design, self.state.band) != outcome.wish and self.state.invalid is None}
+        failure = outcome.failure
+        if failure is None:
+            values["overview"] = outcome.result
+        if self.state.invalid is None:
+            values["problem"] = failure and Problem(failure.text, failure.key or self.state.touched, failure.kind)
+        self.param.update(**values)
+
+    def _take_held(self, outcome):
+        """Publish the held design's overview if it is still held."""
+        if outcome.failure is None and outcome.wish == (self.state.held, self.state.band):
+            self.held = outcome.result
+
+
+def _shared_updater(publish):
+    """Access to the process's worker."""
+    shared = worker.shared()
+    return worker.Updater(shared.overview, publish, shared.executor)
+
+
+def visit(design, document=None, updater=None):
+    """A new visitor's session, beginning with that design; it ends with the document's.
+
+    Parameters
+    ----------
+    design : engine.design.Design
+    document : bokeh.document.Document or None
+    updater : callable or None
+        As for `Session`.
+    """
+    session = Session(DesignState(design), document, updater)
+    if document is not None:
+        document.on_session_destroyed(lambda _: session.close())
+    return session

@@ -1,0 +1,134 @@
+"""The executor: one for the process, small; for each session the latest wish wins and stale ones are dropped."""
+
+import asyncio
+import functools
+import logging
+import threading
+from concurrent.futures import ThreadPoolExecutor
+from dataclasses import dataclass
+
+from threadpoolctl import threadpool_limits
+
+import engine
+from engine.errors import InvalidDesign, NoRestState, NotConverged
+
+N_THREADS = 2            # one visitor dragging must not make another wait for a whole computation
+REMEMBERED = 24          # overviews kept for the whole process: undo, redo and a sample's first sight cost nothing
+
+log = logging.getLogger(__name__)
+
+
+@dataclass(frozen=True)
+class Failure:
+    """Why there is no result: its kind ("invalid", "no rest state", "not converged", "unexpected"), in words, and the field."""
+
+    kind: str
+    text: str
+    key: str | None = None
+
+
+@dataclass(frozen=True)
+class Outcome:
+    """What became of one wish: a result, or the failure that stands in its place."""
+
+    wish: tuple
+    result: object = None
+    failure: Failure | None = None
+
+
+class Worker:
+    """Threads that compute for every session of the process, and what they remember."""
+
+    def __init__(self, n_threads=N_THREADS):
+        pin_blas()
+        self.executor = ThreadPoolExecutor(n_threads, thread_name_prefix="compute")
+        self.overview = functools.lru_cache(maxsize=REMEMBERED)(_overview)
+
+
+class Updater:
+    """One session's access to the worker.
+
+    Parameters
+    ----------
+    compute : callable
+        Runs in the executor with the wish's items as arguments.
+    publish : callable
+        Called with an `Outcome` on the event loop's thread, once for every computation.
+    executor : concurrent.futures.Executor
+    """
+
+    def __init__(self, compute, publish, executor):
+        self._compute, self._publish, self._executor = compute, publish, executor
+        self._wanted = None
+        self._task = None
+        self._closed = False
+
+    @property
+    def busy(self):
+        """Whether something is being computed or waits to be."""
+        return self._task is not None and not self._task.done()
+
+    def want(self, *wish):
+        """Ask for a computation; an earlier wish that has not begun is dropped."""
+        if self._closed:
+            return
+        self._wanted = wish
+        if not self.busy:
+            self._task = asyncio.get_running_loop().create_task(self._work())
+
+    def close(self):
+        """End: publish nothing more."""
+        self._closed = True
+        self._wanted = None
+        if self._task is not None:
+            self._task.cancel()
+
+    async def _work(self):
+        """Compute the newest wish, publish, look again."""
+        loop = asyncio.get_running_loop()
+        while self._wanted is not None:
+            wish, self._wanted = self._wanted, None
+            self._publish(await loop.run_in_executor(self._executor, attempt, self._compute, wish))
+
+
+def attempt(compute, wish):
+    """The outcome of one computation; an error nobody foresaw is logged and becomes an outcome too, so the page lives on."""
+    try:
+        return Outcome(wish, compute(*wish))
+    except Exception as error:
+        failure = describe(error)
+        if failure.kind == "unexpected":
+            log.exception("computation failed for %s", wish)
+        return Outcome(wish, failure=failure)
+
+
+def describe(error):
+    """The failure an exception of a computation is."""
+    for kind, exception in (("invalid", InvalidDesign), ("no rest state", NoRestState), ("not converged", NotConverged)):
+        if isinstance(error, exception):
+            return Failure(kind, str(error), getattr(error, "key", None))
+    return Failure("unexpected", "This design could not be computed, for a reason of the program's own "
+                   f"({type(error).__name__}). Undo the last change; the terminal has the details.")
+
+
+def pin_blas():
+    """One BLAS thread for the process: two cores serve two visitors, and small matrices gain nothing from more."""
+    threadpool_limits(limits=1)
+
+
+_lock = threading.Lock()
+_worker = None
+
+
+def shared():
+    """The process's worker, made at its first use."""
+    global _worker
+    with _lock:
+        if _worker is None:
+            _worker = Worker()
+        return _worker
+
+
+def _overview(design, band):
+    """`engine.overview`, looked up when called."""
+    return engine.overview(design, band)
