@@ -9,16 +9,10 @@ import math
 from dataclasses import dataclass, fields, replace
 from typing import ClassVar
 
-from engine.fields import checked, choice, count, exact_text, flag, invalid, listing, named, number, refuse_later
+from engine.checks import checked, named, refuse_later
+from engine.fields import choice, count, exact_text, flag, invalid, listing, number, words
+from engine.laws import LAW_PARAMETER_NAMES, LAWS, TYPICAL_LAW_PARAMETERS, parameter_fault
 
-LAWS = ("neo-hookean", "mooney-rivlin", "gent", "yeoh", "ogden")
-LAW_PARAMETER_NAMES = {"neo-hookean": (), "mooney-rivlin": ("C2/C1",), "gent": ("J_m",),
-                       "yeoh": ("C20/C10", "C30/C10"), "ogden": ("μ1", "α1", "μ2", "α2", "…")}
-TYPICAL_LAW_PARAMETERS = {"neo-hookean": (), "mooney-rivlin": (0.1,), "gent": (100.0,), "yeoh": (-0.01, 0.0002),
-                          "ogden": (1.0, 1.8, 0.002, 6.0)}
-LARGEST_LAW_PARAMETER = 1e6
-LARGEST_OGDEN_EXPONENT = 20.0
-MOST_OGDEN_TERMS = 6
 MOST_RELAXATION_TERMS = 12
 RELAXATION_TIMES = (1e-7, 1e5)  # s
 LONGEST_NAME, LONGEST_NOTE = 100, 2000
@@ -99,10 +93,13 @@ class Film(_Group):
     viscosity: float = number(0.0, "Film viscosity", "Pa·s", (0.0, 5e3), 1.0,
                               "Damping that grows with frequency, added to the loss factor", scale="log", log_from=0.1,
                               required=False)
-    relaxation: tuple = listing((), "Relaxation", "Pairs of modulus (over the shear modulus) and relaxation time")
+    relaxation: tuple = listing((), "Relaxation", "Pairs of modulus (over the shear modulus) and relaxation time",
+                                columns=("", "s"))
 
     def _check_together(self):
-        _check_law(self)
+        fault = parameter_fault(self.law, self.law_parameters, self.prestretch)
+        if fault:
+            self._refuse("law_parameters", fault)
         if len(self.relaxation) > MOST_RELAXATION_TERMS or not all(_is_row(term, 2) for term in self.relaxation):
             self._refuse("relaxation", f"must be a list of at most {MOST_RELAXATION_TERMS} pairs of modulus ratio and "
                          "relaxation time.")
@@ -111,38 +108,6 @@ class Film(_Group):
             if not (0.0 <= ratio <= 100.0 and low <= time <= high):
                 self._refuse("relaxation", f"holds a ratio of {ratio:g} with a time of {time:g} s; allowed are "
                              f"ratios of 0 to 100 and times of {low:g} s to {high:g} s. Change or remove that pair.")
-
-
-def _check_law(film):
-    """Raise InvalidDesign if the law's parameters have the wrong count or no positive stiffness (see the contract)."""
-    law, values = film.law, film.law_parameters
-    names = LAW_PARAMETER_NAMES[law]
-    fits = (len(values) % 2 == 0 and 2 <= len(values) <= 2 * MOST_OGDEN_TERMS) if law == "ogden" else \
-        len(values) == len(names)
-    if not fits:
-        wanted = f"{', '.join(names)}" if names else "no parameters"
-        film._refuse("law_parameters", f"has {len(values)} numbers; the law \"{law}\" needs {wanted}, for example "
-                     f"{list(TYPICAL_LAW_PARAMETERS[law])}.")
-    if not all(isinstance(v, float) and abs(v) <= LARGEST_LAW_PARAMETER for v in values):
-        film._refuse("law_parameters", f"is {film._text('law_parameters')}; each must be a number between "
-                     f"{-LARGEST_LAW_PARAMETER:g} and {LARGEST_LAW_PARAMETER:g}.")
-    if law == "gent":
-        lam = film.prestretch
-        reached = 2 * lam**2 + lam**-4 - 3  # first invariant of the equibiaxial prestretch, less 3
-        if not values[0] > max(reached, 0.01):
-            film._refuse("law_parameters", f"gives J_m = {values[0]:g}, but the prestretch of {lam:g} already reaches "
-                         f"{reached:.4g}. Raise J_m above {max(reached, 0.01):.4g} or lower the prestretch.")
-    if law == "mooney-rivlin" and not values[0] > -0.999:
-        film._refuse("law_parameters", f"gives C2/C1 = {values[0]:g}: no positive modulus at small strain. "
-                     "Raise C2/C1 above -0.999.")
-    if law == "ogden":
-        terms = [m * a for m, a in zip(values[::2], values[1::2], strict=True)]
-        if not all(0 < abs(a) <= LARGEST_OGDEN_EXPONENT for a in values[1::2]):
-            film._refuse("law_parameters", f"holds an exponent α outside ±{LARGEST_OGDEN_EXPONENT:g} or of 0. "
-                         f"Choose exponents within ±{LARGEST_OGDEN_EXPONENT:g} other than 0.")
-        if not sum(terms) > 1e-6 * max(map(abs, terms)):
-            film._refuse("law_parameters", f"gives a sum of μ·α of {sum(terms):g}: no positive modulus at small "
-                         "strain. Change the terms so that the sum is positive.")
 
 
 @dataclass(frozen=True)
@@ -161,7 +126,7 @@ class Electrodes(_Group):
                                      "Resistance of a square of one electrode sheet", scale="log", log_from=100.0,
                                      required=False, later=True)
     zones: tuple = listing(((0.0, 1.0, 1.0),), "Zones", "Electrode rings: inner, outer edge as fractions of the film's "
-                           "width, and gain", later=True)
+                           "width, and gain", columns=("", "", ""), later=True)
 
     def _check_together(self):
         for zone in self.zones:
@@ -191,7 +156,7 @@ class Rear(_Group):
     group: ClassVar[str] = "rear"
     kind: str = choice("sealed", "Rear", ("open", "sealed"), "Open to the air, or a closed volume")
     volume: float = number(4e-3, "Rear volume", "l", (1e-6, 1.0), 1e-5, "Air volume behind the film, if sealed",
-                           scale="log")
+                           scale="log", required=("kind", "sealed"))
     loss_factor: float = number(0.0, "Rear loss factor", "", (0.0, 1.0), 0.01,
                                 "Loss factor of the air volume, wadding included", required=False)
     static_pressure: float = number(0.0, "Static pressure", "Pa", (-2e4, 2e4), 10.0,
@@ -310,11 +275,13 @@ def field_of(path):
 
 def nearest(word, known):
     """End of a message on an unknown word: "; did you mean ...?" with the nearest known one, "." if none is near."""
-    word = str(word).lower().replace(" ", "_").replace("-", "_")
-    by_end = {other.rpartition(".")[2]: other for other in reversed(known)}
-    close = difflib.get_close_matches(word, known, 1, 0.6)
-    close = close or [by_end[end] for end in difflib.get_close_matches(word.rpartition(".")[2], by_end, 1, 0.6)]
-    return f"; did you mean {close[0]!r}?" if close else "."
+    group, _, end = str(word).lower().replace(" ", "_").replace("-", "_").rpartition(".")
+    own = [other for other in known if other.rpartition(".")[0] == group]
+    for candidates in (own, known):
+        by_end = {other.rpartition(".")[2]: other for other in reversed(candidates)}
+        for close in difflib.get_close_matches(end, by_end, 1, 0.6):
+            return f"; did you mean {by_end[close]!r}?"
+    return "."
 
 
 def _resolve(design, path):
@@ -327,7 +294,7 @@ def _resolve(design, path):
 def _check_words(key, text, longest, blank_allowed):
     """Raise InvalidDesign unless the text can be shown, stored and read back."""
     if not isinstance(text, str):
-        raise invalid(f"{key} is not a text. Give words in quotes.", key, text)
+        raise invalid(f"{key} is {words(text)}, not a text. Give words in quotes.", key, text)
     if len(text) > longest:
         raise invalid(f"{key} has {len(text)} characters; allowed are {longest}. Shorten it.", key, text)
     if not blank_allowed and not text.strip():

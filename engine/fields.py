@@ -12,7 +12,8 @@ meaning  one line
 scale    "linear" or "log": which slider suits
 log_from lowest value above zero of a log slider, SI (its first stop is ``bounds[0]``)
 choices  allowed words of a choice
-required whether a design file must hold it
+columns  display units of the columns of a list's rows; () for a plain row of numbers
+required whether a design file must hold it; (other, word): only where the group's other field is that word
 later    True while only the default is computed
 ======== ===========================================================================================
 """
@@ -106,9 +107,9 @@ def flag(default, label, meaning, *, required=True):
     return _field(default, "flag", label, meaning, required=required)
 
 
-def listing(default, label, meaning, *, required=False, later=False):
-    """Dataclass field of a tuple; its content is checked by the class that owns it."""
-    return _field(default, "list", label, meaning, required=required, later=later)
+def listing(default, label, meaning, *, columns=(), later=False):
+    """Dataclass field of a tuple, a design file need not hold it; its content is checked by the class that owns it."""
+    return _field(default, "list", label, meaning, columns=columns, required=False, later=later)
 
 
 def display_value(field, value):
@@ -123,8 +124,8 @@ def si_value(field, shown):
 
 def exact_text(field, value):
     """A number with its display unit and all its digits ("52.125 mm"), words and lists as they are."""
-    if field.metadata["kind"] not in ("number", "count") or not _is_finite_number(value):
-        return _words(value)
+    if field.metadata["kind"] not in ("number", "count") or not is_finite_number(value):
+        return words(value)
     return with_unit(UNITS[field.metadata["unit"]].exact(value), field)
 
 
@@ -151,7 +152,7 @@ def format_number(field, value):
 def format_value(field, value):
     """``format_number`` with the unit ("52.0 mm"); words for choices, flags and lists."""
     if field.metadata["kind"] not in ("number", "count"):
-        return _words(value)
+        return words(value)
     return "none" if value is None else with_unit(format_number(field, value), field)
 
 
@@ -197,95 +198,26 @@ def at_slider_position(field, position):
     return min(max(value, low), high)
 
 
-def invalid(message, key=None, value=None, bounds=None):
-    """An InvalidDesign that also carries the field's path, the received SI value and the bounds in SI."""
-    error = InvalidDesign(message)
-    error.key, error.value, error.bounds = key, value, bounds
-    return error
+def words(value):
+    """Any received value, short enough for a message."""
+    if isinstance(value, str):
+        text = f'"{value}"'
+    elif value is None or isinstance(value, bool):
+        text = {None: "none", True: "true", False: "false"}[value]
+    elif isinstance(value, tuple | list):
+        text = "[" + ", ".join(map(words, value)) + "]"
+    elif isinstance(value, int) and abs(value) > 10**20:
+        text = "a number far too large"
+    elif isinstance(value, int | float):
+        text = f"{float(value):.15g}"
+    else:
+        text = {"dict": "a table", "datetime": "a date", "date": "a date", "time": "a time of day"}.get(
+            type(value).__name__, f"something of type {type(value).__name__}")
+    return text if len(text) <= 80 else text[:77] + "..."
 
 
-def checked(field, key, value):
-    """The value of a field in its own type (float, int, str, bool, tuple), or InvalidDesign.
-
-    Lists are only turned into tuples of floats (nested where nested); their meaning is the owner's to check.
-    """
-    kind = field.metadata["kind"]
-    check = {"number": _checked_number, "count": _checked_count, "choice": _checked_choice, "flag": _checked_flag,
-             "list": _checked_list}[kind]
-    return check(field, key, value)
-
-
-def refuse_later(field, key, value):
-    """Raise InvalidDesign if the field's physics is not computed yet and its value is not the neutral default."""
-    if field.metadata["later"] and value != field.default and value != ():
-        raise invalid(f"{named(field, key)} is {exact_text(field, value)}: not computed yet. "
-                      f"Leave it at {exact_text(field, field.default)}.", key, value, field.metadata["bounds"])
-
-
-def named(field, key):
-    """The field's label with its path: "Prestretch (film.prestretch)"."""
-    return f"{field.metadata['label']} ({key})"
-
-
-def _field(default, kind, label, meaning, *, unit="", bounds=None, step=None, scale="linear", log_from=None,
-           choices=(), required=True, later=False):
-    return dataclasses.field(default=default, metadata={
-        "kind": kind, "label": label, "unit": unit, "bounds": bounds, "step": step, "meaning": meaning, "scale": scale,
-        "log_from": log_from, "choices": choices, "required": required, "later": later})
-
-
-def _checked_number(field, key, value):
-    if value is None and field.default is None:
-        return None
-    if not _is_finite_number(value):
-        raise invalid(f"{named(field, key)} is {_words(value)}, not a finite number. "
-                      f"Give a number from {bounds_text(field)}.", key, value, field.metadata["bounds"])
-    value = float(value) + 0.0  # no negative zero
-    low, high = field.metadata["bounds"]
-    if not low <= value <= high:
-        raise invalid(f"{named(field, key)} is {exact_text(field, value)}; allowed is {bounds_text(field)}. "
-                      f"{'Raise it to at least' if value < low else 'Lower it to at most'} "
-                      f"{exact_text(field, low if value < low else high)}.", key, value, (low, high))
-    return value
-
-
-def _checked_count(field, key, value):
-    number = _checked_number(field, key, value)
-    if number != int(number):
-        raise invalid(f"{named(field, key)} is {_words(value)}, not a whole number. "
-                      f"Give a whole number from {bounds_text(field)}.", key, value, field.metadata["bounds"])
-    return int(number)
-
-
-def _checked_choice(field, key, value):
-    choices = field.metadata["choices"]
-    if not isinstance(value, str) or value not in choices:
-        raise invalid(f"{named(field, key)} is {_words(value)}. Choose one of {', '.join(map(_words, choices))}.",
-                      key, value)
-    return str(value)
-
-
-def _checked_flag(field, key, value):
-    if not isinstance(value, bool) and type(value).__name__ != "bool":
-        raise invalid(f"{named(field, key)} is {_words(value)}. Give true or false.", key, value)
-    return bool(value)
-
-
-def _checked_list(field, key, value):
-    if isinstance(value, str | bytes) or not hasattr(value, "__iter__"):
-        raise invalid(f"{named(field, key)} is {_words(value)}. Give a list of numbers.", key, value)
-    return tuple(_checked_list(field, key, item) if hasattr(item, "__iter__") and not isinstance(item, str | bytes)
-                 else _item(field, key, item) for item in value)
-
-
-def _item(field, key, item):
-    if not _is_finite_number(item):
-        raise invalid(f"{named(field, key)} holds {_words(item)}, not a finite number. "
-                      "Give finite numbers only.", key, item)
-    return float(item) + 0.0
-
-
-def _is_finite_number(value):
+def is_finite_number(value):
+    """Whether a received value is a number that a float can hold, and finite; yes or no is no number."""
     if isinstance(value, bool | str | bytes) or value is None:
         return False
     try:
@@ -294,21 +226,19 @@ def _is_finite_number(value):
         return False
 
 
-def _words(value):
-    """Any received value, short enough for a message."""
-    if isinstance(value, str):
-        text = f'"{value}"'
-    elif value is None or isinstance(value, bool):
-        text = {None: "none", True: "true", False: "false"}[value]
-    elif isinstance(value, tuple | list):
-        text = "[" + ", ".join(map(_words, value)) + "]"
-    elif isinstance(value, int) and abs(value) > 10**20:
-        text = "a number far too large"
-    elif isinstance(value, int | float):
-        text = f"{float(value):.15g}"
-    else:
-        text = f"something of type {type(value).__name__}"
-    return text if len(text) <= 80 else text[:77] + "..."
+def invalid(message, key=None, value=None, bounds=None):
+    """An InvalidDesign that also carries the field's path, the received SI value and the bounds in SI."""
+    error = InvalidDesign(message)
+    error.key, error.value, error.bounds = key, value, bounds
+    return error
+
+
+def _field(default, kind, label, meaning, *, unit="", bounds=None, step=None, scale="linear", log_from=None,
+           choices=(), columns=(), required=True, later=False):
+    return dataclasses.field(default=default, metadata={
+        "kind": kind, "label": label, "unit": unit, "bounds": bounds, "step": step, "meaning": meaning, "scale": scale,
+        "log_from": log_from, "choices": choices, "columns": columns, "required": required,
+        "later": later})
 
 
 def _plain(value):
