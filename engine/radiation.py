@@ -246,7 +246,7 @@ def _ring_distances(radius, height, distance, angle, k_max):
         return np.sqrt(square), np.ones_like(r), np.arange(r.size)
     decay = np.arccosh(np.maximum(square / np.maximum(swing, 1e-300 * square), 1.0 + 1e-12))
     phase = 0.5 * k_max * (np.sqrt(square + swing) - np.sqrt(square - swing))
-    N = np.ceil(0.5 * (phase + 5.0 * phase ** (1.0 / 3.0) + 28.0 / decay) + 1.0).astype(int)
+    N = np.ceil(0.5 * (phase + 6.5 * phase ** (1.0 / 3.0) + 28.0 / decay) + 3.0).astype(int)
     ring = np.repeat(np.arange(r.size), N)
     starts = np.concatenate([[0], np.cumsum(N)[:-1]])
     cosine = np.cos(np.pi * (np.arange(ring.size) - starts[ring] + 0.5) / N[ring])

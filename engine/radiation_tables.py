@@ -204,12 +204,18 @@ def _coefficients(top, J, order):
 def _resistance(x, J, order):
     """A at every x, (len(x), J, J), by the positive half of an even Gauss-Legendre rule."""
     A = np.empty((len(x), J, J))
+    rules = {n: np.polynomial.legendre.leggauss(2 * n) for n in {_resistance_points(xi) for xi in x}}
     for i, xi in enumerate(x):
-        u, weight = np.polynomial.legendre.leggauss(2 * (int(0.75 * xi) + 16))
+        u, weight = rules[_resistance_points(xi)]
         half = u > 0.0
         G = bessel_over_argument(order + 1, J, xi * np.sqrt(1.0 - u[half] ** 2))
         A[i] = (G * weight[half]) @ G.T
     return A
+
+
+def _resistance_points(x):
+    """Points on half the rule for A(x): 0.75 x + 16, rounded up to 16 so that few rules serve."""
+    return -(-int(0.75 * x + 16.0) // 16) * 16
 
 
 def _reactance(top, K, J, order):
