@@ -2,7 +2,19 @@
 
 
 class InvalidDesign(ValueError):
-    """A design, or the file it came from, that cannot be computed; the message names what, where and how to mend it."""
+    """A design, or the file it came from, that cannot be computed; the message names what, where and how to mend it.
+
+    Attributes
+    ----------
+    key : str or None
+        Path of the field at fault, such as "film.prestretch".
+    value, bounds :
+        What was received and the allowed (low, high), SI; None where there is none.
+    """
+
+    def __init__(self, message, key=None, value=None, bounds=None):
+        super().__init__(message)
+        self.key, self.value, self.bounds = key, value, bounds
 
 
 class NotConverged(RuntimeError):

@@ -1,11 +1,26 @@
 """From the drive to the sound: motion of every mode, its pressure at the listener, and the sum."""
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
+from functools import lru_cache
 
 import numpy as np
 
-from engine.modes import Modes
-from engine.statics import Equilibrium
+from engine import film as flm
+from engine import linear, material, radiation, statics
+from engine import source as src
+from engine.design import Listener
+from engine.errors import InvalidDesign
+from engine.errors import InvalidDesign
+from engine.modes import MOST_MODES, Basis, Modes
+from engine.modes import solve as solve_modes
+from engine.radiation_tables import chebyshev_matrix, chebyshev_nodes
+from engine.statics import Equilibrium, Finding, frozen
+
+REFERENCE_PRESSURE = 20e-6      # Pa, ISO 1683
+DEFAULT_BAND = (20.0, 5000.0)   # Hz
+FREQUENCY_RANGE = (0.1, 40e3)   # Hz
+GRID_POINTS = 280               # of the even log grid, before refinement at resonances
+MOST_FREQUENCIES = 20000
 
 
 @dataclass(frozen=True)
@@ -20,9 +35,275 @@ class Response:
     signed_share: np.ndarray   # (n_freq, n_modes+1) Re(contribution conj(pressure)) / (|pressure| sum |contribution|)
     survival: np.ndarray       # (n_freq,) |pressure| / sum |contribution|
     level_db: np.ndarray       # (n_freq,) dB re 20 uPa
-    impedance: np.ndarray      # (n_freq,) complex ohm
+    impedance: np.ndarray      # (n_freq,) complex ohm, the motion's part included
     sound_power: np.ndarray    # (n_freq,) W, to the listener's side
     modes: Modes
     rest: Equilibrium
     estimate_above: float      # Hz: above it the cone's depth makes the level an estimate (inf: nowhere)
-    findings: tuple = ()       # of Finding
+    findings: tuple            # of Finding
+    motion: "Motion"           # what directivity and later questions need
+    amplitude: float           # V
+
+    def directivity(self, angles):
+        """Pressure (n_freq, n_angles) complex Pa at the listener's distance, at polar angles (n_angles,) in radians."""
+        distance = self.listener_distance
+        q = self.motion.unit*self.amplitude
+        return np.stack([np.sum(_transfer(self.motion, distance, angle)*q, axis=1) for angle in np.atleast_1d(angles)],
+                        axis=1)
+
+    listener_distance: float = 1.0    # m
+
+
+@dataclass(frozen=True)
+class Motion:
+    """Motion of the basis per volt of signal, without listener."""
+
+    system: linear.System
+    basis: Basis
+    frequency: np.ndarray      # (n_freq,) Hz
+    unit: np.ndarray           # (n_freq, n_basis) m/V: modes, then static corrections
+    power: np.ndarray          # (n_freq,) W/V2 to one side
+
+
+def response(design, frequency=None, band=DEFAULT_BAND):
+    """Linear response of a design about its biased rest state, at the drive's amplitude.
+
+    Parameters
+    ----------
+    design : Design
+    frequency : (n_freq,) Hz, ascending; None: a log grid over the band, refined around the resonances.
+    band : (low, high) Hz, used where frequency is None.
+
+    Returns: Response.
+    Raises: NoRestState, NotConverged (see equilibrium); InvalidDesign for frequencies that cannot be computed.
+    """
+    asked = _band_key(band) if frequency is None else _frequency_key(frequency)
+    motion = _motion(_mechanical(design), asked)
+    rest = statics.solve(design)
+    n_modes = len(motion.basis.modes.frequency)
+    q = motion.unit*design.drive.amplitude
+    listener = design.listener
+    _check_listener(motion.system, listener)
+    p = _transfer(motion, listener.distance, listener.angle)*q
+    contribution = np.concatenate([p[:, :n_modes], p[:, n_modes:].sum(axis=1, keepdims=True)], axis=1)
+    pressure = p.sum(axis=1)
+    share, survival = _shares(contribution, pressure)
+    equilibrium = statics.judge(design, rest, motion.system.film, motion.system.state)
+    omega = 2*np.pi*motion.frequency
+    charge = motion.system.capacitance + motion.unit @ (motion.basis.shapes @ motion.system.load)
+    return Response(
+        frequency=motion.frequency, pressure=frozen(pressure), contribution=frozen(contribution),
+        stroke=frozen(np.abs(q @ motion.basis.shapes[:, 0])), displacement=frozen(q[:, :n_modes]),
+        signed_share=frozen(share), survival=frozen(survival), level_db=frozen(level(pressure)),
+        impedance=frozen(1/(1j*omega*charge)), sound_power=frozen(motion.power*design.drive.amplitude**2),
+        modes=motion.basis.modes, rest=equilibrium, estimate_above=estimate_above(motion.system, equilibrium),
+        findings=equilibrium.conditions + _limits(motion), motion=motion, amplitude=design.drive.amplitude,
+        listener_distance=listener.distance)
+
+
+def level(pressure):
+    """dB re 20 uPa of a peak amplitude; silence is put at -400 dB."""
+    return 20*np.log10(np.maximum(np.abs(pressure)/np.sqrt(2)/REFERENCE_PRESSURE, 1e-20))
+
+
+def _shares(contribution, pressure):
+    """Signed share of each contribution and survival; 0 where nothing moves."""
+    total, made = np.abs(pressure), np.abs(contribution).sum(axis=1)
+    direction = np.conj(pressure)/np.where(total > 0, total, 1.0)
+    made = np.where(made > 0, made, 1.0)
+    return (contribution*direction[:, None]).real/made[:, None], total/made
+
+
+def estimate_above(system, equilibrium):
+    """Hz from which the cone's depth, left out by the flat source, moves the level by more than 0.5 dB."""
+    kb = radiation.depth_estimate_limit(abs(equilibrium.centre_height)/system.frame_radius)
+    return float(kb*system.air.sound_speed/(2*np.pi*system.frame_radius))
+
+
+def _limits(motion):
+    """Findings about what the basis and the mesh can hold."""
+    modes, top = motion.basis.modes, motion.system.frequency_max
+    reach = motion.system.unresolved_above
+    if len(modes.frequency) >= MOST_MODES:
+        reach = min(reach, modes.frequency[-1]/linear.MODES_TO)
+    if reach >= top:
+        return ()
+    return (Finding("resolution", f"So many modes lie below {top/1e3:.3g} kHz that the result holds only up to "
+                    f"{reach:.3g} Hz.", "response", value=top, limit=float(reach)),)
+
+
+def _mechanical(design):
+    """The design without what only scales or listens: key of everything computed per volt."""
+    return replace(design, name="-", note="", drive=replace(design.drive, amplitude=0.0, law="sine"),
+                   listener=Listener())
+
+
+def _band_key(band):
+    low, high = (float(f) for f in band)
+    if not FREQUENCY_RANGE[0] <= low < high <= FREQUENCY_RANGE[1]:
+        raise InvalidDesign(f"The band {low:g} Hz to {high:g} Hz cannot be computed: give two ascending frequencies "
+                            f"between {FREQUENCY_RANGE[0]:g} Hz and {FREQUENCY_RANGE[1]:g} Hz.")
+    return low, high
+
+
+def _frequency_key(frequency):
+    f = np.atleast_1d(np.asarray(frequency, float))
+    good = (f.ndim == 1 and 0 < f.size <= MOST_FREQUENCIES and np.all(np.isfinite(f)) and np.all(np.diff(f) > 0)
+            and f[0] >= FREQUENCY_RANGE[0] and f[-1] <= FREQUENCY_RANGE[1])
+    if not good:
+        raise InvalidDesign(f"These frequencies cannot be computed: give one to {MOST_FREQUENCIES} ascending numbers "
+                            f"between {FREQUENCY_RANGE[0]:g} Hz and {FREQUENCY_RANGE[1]:g} Hz.")
+    return f.tobytes()
+
+
+@lru_cache(maxsize=6)
+def _system_and_basis(design, frequency_max):
+    system = linear.build(design, frequency_max)
+    return system, solve_modes(system)
+
+
+def prepare():
+    """Build the air's tables that ordinary designs need, so that the first response finds them; for a thread."""
+    for x_max, n in ((16.0, 64), (16.0, 80), (4.0, 48), (16.0, 96), (4.0, 64)):
+        radiation.prepare(x_max, n)
+
+
+@lru_cache(maxsize=4)
+def _motion(design, asked):
+    given = np.frombuffer(asked) if isinstance(asked, bytes) else None
+    system, basis = _system_and_basis(design, asked[1] if given is None else float(given[-1]))
+    return solve_motion(system, basis, frequency_grid(basis, *asked) if given is None else given)
+
+
+def frequency_grid(basis, low, high, n_points=GRID_POINTS):
+    """(n_freq,) Hz: an even log grid and, at every resonance narrower than it, points across the peak."""
+    even = np.geomspace(low, high, n_points)
+    f, zeta = basis.refined, basis.modes.damping_ratio
+    narrow = (f > low) & (f < high) & (zeta < 2.5*np.log(high/low)/n_points)
+    offsets = np.array([-2.5, -1.0, -0.4, 0.0, 0.4, 1.0, 2.5])
+    extra = (f[narrow, None]*(1 + zeta[narrow, None]*offsets)).ravel()
+    every = np.unique(np.concatenate([even, extra[(extra > low) & (extra < high)]]))
+    keep = np.append(True, np.diff(np.log(every)) > 1e-6)
+    keep[-1] = True
+    return every[keep]
+
+
+def solve_motion(system, basis, frequency):
+    """Motion at the given ascending frequencies, octave by octave from the top.
+
+    An octave's unknowns are the modes up to twice its upper end and the static answer of everything above them, so
+    every mode keeps its contribution at every frequency. Source: DEVELOPERS.md, "Response".
+    """
+    P = basis.shapes
+    reduced = _reduce(system, P)
+    unit = np.empty((len(frequency), len(P)), complex)
+    power = np.empty(len(frequency))
+    stop = len(frequency)
+    while stop > 0:
+        top = frequency[stop - 1]
+        start = int(np.searchsorted(frequency, top/2, side="right"))
+        if stop - start < 8 or top < system.frequency_max/64:
+            start = 0 if top < system.frequency_max/64 else min(start, max(stop - 8, 0))
+        part = slice(start, stop)
+        unit[part], power[part] = _octave(system, basis, reduced, frequency[part])
+        stop = start
+    frequency = np.array(frequency)
+    return Motion(system, basis, frozen(frequency), frozen(unit), frozen(power))
+
+
+@dataclass(frozen=True)
+class _Reduced:
+    """Matrices of the dynamic stiffness on the basis, and the load per volt."""
+
+    stiffness: np.ndarray
+    dissipation: np.ndarray
+    mass: np.ndarray
+    constant_loss: np.ndarray
+    load: np.ndarray
+    static: np.ndarray       # (n_basis, 2): answers at rest to the electrode load and to a pressure
+
+
+def _reduce(system, P):
+    v, e = P @ system.volume, P[:, 0]
+    behind = system.rear.stiffness*np.outer(v, v)
+    K = P @ system.stiffness @ P.T + behind
+    load = P @ system.load
+    return _Reduced(K, P @ system.dissipation @ P.T, (P*system.mass) @ P.T,
+                    system.spring_loss*np.outer(e, e) + system.rear.loss_factor*behind, load,
+                    np.linalg.solve(K, np.stack([load, v], axis=1)))
+
+
+def _sub_basis(reduced, frequency, n_modes, top):
+    """(n_basis, n) columns: the modes up to twice the octave's top, then the static answers of the rest."""
+    n_basis = len(reduced.load)
+    low = np.append(frequency <= 2*top, np.zeros(n_basis - n_modes, bool))
+    if not np.any(~low[:n_modes]):
+        return np.eye(n_basis)
+    rest = np.where(low[:, None], 0.0, reduced.static)
+    u, sizes, _ = np.linalg.svd(rest/np.maximum(np.linalg.norm(rest, axis=0), 1e-300), full_matrices=False)
+    return np.concatenate([np.eye(n_basis)[:, low], u[:, sizes > 1e-9]], axis=1)
+
+
+def _octave(system, basis, reduced, frequency):
+    """Unit motion (n_freq, n_basis) and unit power (n_freq,) of one octave."""
+    modes = basis.modes
+    T = _sub_basis(reduced, modes.frequency, len(modes.frequency), frequency[-1])
+    n = T.shape[1]
+    omega = 2*np.pi*frequency
+    x = omega*system.frame_radius/system.air.sound_speed
+    S = material.viscous_modulus(omega, *system.film_losses)
+    structure = np.stack([T.T @ X @ T for X in (reduced.stiffness, reduced.dissipation, reduced.mass,
+                                                 reduced.constant_loss)]).reshape(4, -1)
+    weights, resistance, reactance = _air_on(basis, T, x)
+    # i omega N_s Z = N_s eps rho b^3 omega^2 (i x A - B)
+    per_side = 2*np.pi*system.air.density*system.frame_radius**3*omega**2
+    heavy = per_side*system.rear.faces*system.air_load
+    one = np.ones_like(omega)
+    Z = np.empty((len(frequency), n, n), complex)
+    Z.real = (np.column_stack([one, S.real, -omega**2, -heavy[:, None]*weights])
+              @ np.concatenate([structure[:3], reactance])).reshape(-1, n, n)
+    Z.imag = (np.column_stack([S.imag, one, (heavy*x)[:, None]*weights])
+              @ np.concatenate([structure[[1, 3]], resistance])).reshape(-1, n, n)
+    q = np.linalg.solve(Z, np.broadcast_to((T.T @ reduced.load)[:, None], (len(frequency), n, 1)).astype(complex))[..., 0]
+    real = ((per_side*x)[:, None]*weights @ resistance).reshape(-1, n, n)     # omega Re Z of one side
+    power = omega/2*np.einsum("fi,fi->f", q.conj(), (real @ q[..., None])[..., 0]).real
+    return q @ T.T, power
+
+
+def _air_on(basis, T, x):
+    """Weights (n_freq, k) and tables (k, n*n) of resistance and reactance on a sub-basis, k nodes across the octave."""
+    resistance, reactance = basis.projected
+    n_nodes = min(int(np.ceil(np.ptp(x) + 4.5*np.cbrt(np.ptp(x)) + 4)), basis.tables.n_terms)
+    places, to_coefficients = chebyshev_nodes(n_nodes)
+    weights = chebyshev_matrix((x - x[0])/max(np.ptp(x), 1e-300), n_nodes) @ to_coefficients
+    at = radiation.interpolation(x[0] + np.ptp(x)*places, basis.tables)
+    shape = (n_nodes, *resistance.shape[1:])
+    out = []
+    for table in (resistance, reactance):
+        local = (at @ table.reshape(len(table), -1)).reshape(shape)
+        out.append((T.T @ local @ T).reshape(n_nodes, -1))
+    return weights, *out
+
+
+def _check_listener(system, listener):
+    """Raise InvalidDesign where the listener is on or behind the film."""
+    across, along = listener.distance*np.sin(listener.angle), listener.distance*np.cos(listener.angle)
+    radius, height = (np.append(start, v) for start, v in zip(
+        ([0.0], [system.state[0]]), flm.expand(system.film, system.state, at_rest=True), strict=True))
+    surface = np.interp(across, radius, np.maximum(height, 0.0), right=0.0)
+    room = 2e-3*system.frame_radius
+    if along < surface + room and across < system.frame_radius + room:
+        raise InvalidDesign(
+            f"The listener (listener.distance), {listener.distance*1e3:.3g} mm from the middle of the frame plane, is on "
+            f"or behind the film, which stands {surface*1e3:.3g} mm high there. Move the listener further away.",
+            "listener.distance", listener.distance)
+
+
+def _transfer(motion, distance, angle):
+    """(n_freq, n_basis) Pa/m: pressure at a point per unit of each basis vector, the air's absorption included."""
+    system = motion.system
+    flow = src.flow(system.source, motion.basis.shapes)
+    T = radiation.listener_transfer(system.source.radius, system.source.height, flow.T,
+                                    2*np.pi*motion.frequency/system.air.sound_speed, distance, angle,
+                                    system.air.density, system.air.sound_speed)
+    return T*10**(-system.air.absorption(motion.frequency)*distance/20)[:, None]
