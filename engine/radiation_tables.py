@@ -18,8 +18,9 @@ from scipy.special import j0, j1
 
 LADDER = (4.0, 16.0, 64.0, 128.0)     # largest k b of the kept tables; beyond, multiples of 64
 ROUNDING = 16                         # tables are kept for multiples of this many polynomials
-SMALLEST_BUILD = 64                   # polynomials; fewer are a sub-block
-TRIM = 1e-14                          # of sqrt(B_ii B_jj): coefficients below it are left out
+CORE = 64                             # polynomials, up to k b = 64, that may need every term; fewer are a sub-block
+OUTER_TERMS = 20                      # terms that the polynomials beyond the core need
+TRIM = 1e-12                          # of sqrt(B_ii B_jj): coefficients below it are left out
 LARGEST_BATCH = 8192                  # points evaluated at once
 
 
@@ -161,24 +162,22 @@ def kept(key, build):
 
 
 def _trimmed(top, J, order):
-    """Tables of J polynomials from the full coefficients."""
-    size = SMALLEST_BUILD
-    while size < J:
-        size *= 2
-    A, B = kept(("full", top, order, size), lambda: _coefficients(top, size, order))
-    K = len(A)
+    """Tables of J polynomials from the full coefficients, what vanishes left out."""
     diagonal = np.sqrt(np.diag(static_table(J, order)))
     small = TRIM * diagonal[:, None] * diagonal
-    seen = (np.abs(B[:, :J, :J]) > small) | (np.abs(A[:, :J, :J]) * top ** (2 * order + 1) > small)
-    reach = np.where(seen.any(axis=2), np.arange(1, J + 1), 0).max(axis=1)          # (K,)
-    reach = np.maximum.accumulate(reach[::-1])[::-1]
-    sizes = np.clip(-(-reach // 8) * 8, 8, J)
-    edges = np.concatenate([[0], np.flatnonzero(np.diff(sizes)) + 1, [K]])
-    blocks = []
-    for first, last in pairwise(edges):
-        n = sizes[first]
-        stack = np.concatenate([A[first:last, :n, :n], B[first:last, :n, :n]]).transpose(1, 0, 2)
-        blocks.append((int(first), int(last), _frozen(np.ascontiguousarray(stack))))
+    blocks, K = [], n_terms(top)
+    for first, (A, B) in _layers(top, J, order):
+        n = min(J, A.shape[1])
+        A, B = A[:, :n, :n], B[:, :n, :n]
+        seen = np.maximum(np.abs(B), np.abs(A) * top ** (2 * order + 1)) > small[:n, :n]
+        reach = np.where(seen.any(axis=2), np.arange(1, n + 1), 0).max(axis=1)
+        reach = np.maximum.accumulate(reach[::-1])[::-1]
+        sizes = np.clip(-(-reach // 8) * 8, 8, n)
+        edges = np.concatenate([[0], np.flatnonzero(np.diff(sizes)) + 1, [len(sizes)]])
+        for low, high in pairwise(edges.tolist()):
+            m = sizes[low]
+            stack = np.concatenate([A[low:high, :m, :m], B[low:high, :m, :m]]).transpose(1, 0, 2)
+            blocks.append((first + low, first + high, _frozen(np.ascontiguousarray(stack))))
     return Tables(order, top, J, K, _frozen(top**2 * chebyshev_nodes(K)[0]), tuple(blocks))
 
 
@@ -188,9 +187,26 @@ def _frozen(array):
     return array
 
 
-def _coefficients(top, J, order):
-    """Chebyshev coefficients (K, J, J) of A/x^(2n) and of B, signs folded in."""
-    K = n_terms(top)
+def _layers(top, J, order):
+    """Full coefficients as (first term, (A, B)): all terms of a core of polynomials, preceded by few terms of all."""
+    core = int(CORE * max(1.0, np.ceil(top / 64.0)))
+    inner = kept(("full", top, order, core), lambda: _coefficients(top, n_terms(top), core, order))
+    size = -(-J // CORE) * CORE
+    if size <= core:
+        return [(0, inner)]
+
+    def build():
+        outer = _coefficients(top, OUTER_TERMS, size, order)
+        for whole, part in zip(outer, inner, strict=True):
+            whole[:, :core, :core] = part[:OUTER_TERMS]
+        return outer
+
+    outer = kept(("full", top, order, size), build)
+    return [(0, outer), (OUTER_TERMS, tuple(part[OUTER_TERMS:] for part in inner))]
+
+
+def _coefficients(top, K, J, order):
+    """K Chebyshev coefficients (K, J, J) of A/x^(2n) and of B, signs folded in."""
     nodes, to_coefficients = chebyshev_nodes(K)
     x = top * np.sqrt(nodes)
     A = np.tensordot(to_coefficients, _resistance(x, J, order) / x[:, None, None] ** (2 * order), axes=1)
@@ -221,13 +237,14 @@ def _resistance_points(x):
 def _reactance(top, K, J, order):
     """Coefficients (K, J, J) of B(x) - B(0), signs not folded in.
 
-    The integrand F(sqrt(x^2+w^2)) - F(w) is summed over bands of w, each twice the last; the further out, the fewer
-    terms in x^2 it needs. It falls like x^2/w^4: what is left out beyond the last band is below 3e-11.
+    The integrand F(sqrt(x^2+w^2)) - F(w) is summed over bands of w, each twice the last; the further out, the
+    smaller it is and the fewer terms in x^2 it needs. It falls like x^2/w^4: what is left out beyond the last band is below 4e-11.
     """
     total = np.zeros((K, J, J))
-    low, high, end = 0.0, max(2.0 * top, 16.0), max(300.0 * np.sqrt(top), 4.0 * top)
+    low, high, end = 0.0, 2.0 * max(top, 8.0), 250.0 * np.sqrt(top)
     while low < end:
-        terms = K if low == 0.0 else min(K, n_terms(top**2 / (2.0 * low)))
+        swing = top**2 / (2.0 * low) if low else np.inf
+        terms = int(min(K, swing + 4.0 * swing ** (1.0 / 3.0) + 3.0))
         nodes, to_coefficients = chebyshev_nodes(terms)
         change = np.zeros((terms, J, J))
         for w, weight in _panels(low, high):
@@ -237,7 +254,7 @@ def _reactance(top, K, J, order):
             G = bessel_over_argument(order + 1, J, w)
             change -= (G * weight) @ G.T
         total[:terms] += np.tensordot(to_coefficients, change, axes=1)
-        low, high = high, min(2.0 * high, max(end, 2.0 * high))
+        low, high = high, 2.0 * high
     return total
 
 
