@@ -238,7 +238,7 @@ def _reactance(top, K, J, order):
     """Coefficients (K, J, J) of B(x) - B(0), signs not folded in.
 
     The integrand F(sqrt(x^2+w^2)) - F(w) is summed over bands of w, each twice the last; the further out, the
-    smaller it is and the fewer terms in x^2 it needs. It falls like x^2/w^4: what is left out beyond the last band is below 4e-11.
+    smaller it is and the fewer terms in x^2 it needs. It falls like x^2/w^4: beyond the last band 4e-11 is left out.
     """
     total = np.zeros((K, J, J))
     low, high, end = 0.0, 2.0 * max(top, 8.0), 250.0 * np.sqrt(top)
