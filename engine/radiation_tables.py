@@ -244,7 +244,7 @@ def _reactance(top, K, J, order):
     low, high, end = 0.0, 2.0 * max(top, 8.0), 250.0 * np.sqrt(top)
     while low < end:
         swing = top**2 / (2.0 * low) if low else np.inf
-        terms = int(min(K, swing + 4.0 * swing ** (1.0 / 3.0) + 3.0))
+        terms = int(min(K, swing + 5.0 * swing ** (1.0 / 3.0) + 4.0))
         nodes, to_coefficients = chebyshev_nodes(terms)
         change = np.zeros((terms, J, J))
         for w, weight in _panels(low, high):
