@@ -11,7 +11,7 @@ CARBON_DIOXIDE = 4e-4                      # mole fraction the reference equatio
 REFERENCE_PRESSURE = 101325.0              # Pa, ISO 9613-1
 REFERENCE_TEMPERATURE = 293.15             # K, ISO 9613-1
 TRIPLE_POINT = 273.16                      # K
-TEMPERATURE_RANGE = (253.15, 323.15)       # K, span of the tables of ISO 9613-1
+TEMPERATURE_RANGE = (253.0, 323.5)         # K, -20 to 50 C: span of the tables of ISO 9613-1
 PRESSURE_RANGE = (50e3, 110e3)             # Pa
 
 
@@ -51,7 +51,7 @@ def properties(temperature, pressure, relative_humidity):
     Density by CIPM-2007, speed of sound by Cramer's zero-frequency polynomial.
 
     Returns: Air.
-    Raises: InvalidDesign outside 253.15 ... 323.15 K, 50 ... 110 kPa, humidity 0 ... 1.
+    Raises: InvalidDesign outside 253 ... 323.5 K, 50 ... 110 kPa, humidity 0 ... 1.
     Source: Picard et al. 2008 (Metrologia 45:149); Cramer 1993 (J. Acoust. Soc. Am. 93:2510); both as restated in
     IEC 61094-2:2009 annex F, for a carbon dioxide fraction of 0.0004.
     """
