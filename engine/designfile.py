@@ -227,17 +227,18 @@ def _quantity(field, key, value, symbol):
     if not match:
         raise _misread(field, key, value, "not a decimal number with a unit", symbol)
     registry = _registry()
-    wanted = registry.parse_units(unit.si)
+    wanted = registry.Quantity(Decimal(1), registry.parse_units(unit.si))
     try:
-        given = registry.parse_units(match[2]) if UNIT_TEXT.fullmatch(match[2]) else None
-    except (pint.errors.PintError, ValueError):
+        known = registry.parse_units(match[2]) if UNIT_TEXT.fullmatch(match[2]) else None
+        given = None if known is None else registry.Quantity(Decimal(match[1]), known)
+        is_same_kind = given is not None and given.to_root_units().units == wanted.to_root_units().units
+    except (pint.errors.PintError, ValueError, TypeError):  # the last: decibels and their like have no decimal value
         given = None
     if given is None:
         raise _misread(field, key, value, "with an unknown unit", symbol)
-    quantity = registry.Quantity(Decimal(match[1]), given)
-    if quantity.to_root_units().units != registry.Quantity(Decimal(1), wanted).to_root_units().units:
+    if not is_same_kind:
         raise _misread(field, key, value, "of the wrong dimension", symbol)
-    return float(quantity.to(wanted).magnitude)
+    return float(given.to(wanted.units).magnitude)
 
 
 def _misread(field, key, value, fault, symbol):
