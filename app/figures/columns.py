@@ -4,6 +4,8 @@ from dataclasses import dataclass
 
 import numpy as np
 
+from app.theme import file_stem
+
 MOST_ROWS = 24          # modes with a row of their own in the share map
 MAP_COLUMNS = 480       # of the share map, uniform in log frequency
 FADE_DB = 25.0          # columns this far below the band's mean level are faded
@@ -126,7 +128,7 @@ def _still(overview, n_rows, shown, others):
     design, response = overview.design, overview.response
     in_plane = [m for m, kind in enumerate(response.modes.kind) if kind == "in-plane"]
     free = design.centre.spring_free_height if design.centre.spring_rate > 0 else np.nan
-    return {"name": [design.name], "low": [overview.band[0]], "high": [overview.band[1]], "n_rows": [n_rows],
+    return {"stem": [file_stem(design.name)], "low": [overview.band[0]], "high": [overview.band[1]], "n_rows": [n_rows],
             "n_shown": [len(shown)], "n_others": [len(others)], "estimate_above": [min(response.estimate_above, 1e9)],
             "frame_radius": [design.geometry.frame_radius], "centre_radius": [design.geometry.centre_radius],
             "centre_height": [response.rest.centre_height], "spring_free_height": [None if np.isnan(free) else free],

@@ -1,0 +1,206 @@
+"""All figures of the first page and their one cursor: built once, then only data are replaced."""
+
+from contextlib import nullcontext
+from html import escape
+from pathlib import Path
+
+import numpy as np
+from bokeh.models import Column, CustomJS, Div, InlineStyleSheet, Row
+from panel.io import hold as hold_events
+
+from app import theme
+from app.figures.canvas import Inks, source
+from app.figures.columns import columns
+from app.figures.gallery import Gallery
+from app.figures.phasor import Phasor
+from app.figures.section import Section
+from app.figures.spine import Spine
+from app.figures.strip import changes_html, foot_html, strip_html
+
+HERE = Path(__file__).parent
+SCRIPTS = ("format", "reading", "words", "spine", "phasor", "section", "gallery", "save", "cursor", "boot")
+SENT = ("level", "rows", "motion", "shapes", "nodes", "gallery", "moving", "still")
+PLOTS = ("level", "share", "phasor", "section", "gallery")
+LAST_GOOD = "last good state"
+
+
+class Board:
+    """Figures of one session; every attribute without underscore that is a Bokeh model is ready to place.
+
+    strip, sentence, level, share, phasor, section, gallery, foot, changes: the parts. cursor: source with the column
+    ``frequency`` (Hz, one row); after the first ``show`` it belongs to the browser.
+    """
+
+    def __init__(self, dark=False):
+        self._inks = Inks(theme.palette(dark))
+        self._style = InlineStyleSheet(css=(HERE / "board.css").read_text(encoding="utf-8"))
+        self._spine, self._phasor = Spine(self._inks), Phasor(self._inks)
+        self._section, self._gallery = Section(self._inks), Gallery(self._inks)
+        self._plots = {"level": self._spine.level, "share": self._spine.share, "phasor": self._phasor.plot,
+                       "section": self._section.plot, "gallery": self._gallery.plot}
+        self._menus = {name: self._html(_menu_html(name), position="absolute", top="0", right="0", z_index="2")
+                       for name in PLOTS}
+        self._notices = {name: self._html("", position="absolute", top="32%", left="12%", right="12%", z_index="2")
+                         for name in PLOTS}
+        for notice in self._notices.values():
+            notice.visible = False
+        self._sent = {"level": self._spine.level_source, "gallery": self._gallery.modes,
+                      **{name: source(name, **_EMPTY[name]) for name in _EMPTY}}
+        self._held_sent = {"level": self._spine.held_source, "gallery": source("held_gallery", **self._gallery.modes.data),
+                           **{name: source(f"held_{name}", **_EMPTY[name]) for name in _EMPTY}}
+        self.cursor = source("cursor", frequency=[])
+        self._pressed = source("pressed", key=[], count=[])
+        self._pressed.syncable = True
+        self._listeners = {}
+        self._pressed.on_change("data", self._on_pressed)
+        self._place()
+        self._overview = self._held = None
+        self._start_browser_code()
+
+    def _place(self):
+        self.strip = self._html("")
+        self._sentence = self._html("", role="status")
+        self._buttons = self._html(_BUTTONS)
+        self._buttons.sizing_mode = None
+        self.sentence = Row(self._sentence, self._buttons, sizing_mode="stretch_width")
+        self._gallery_head = self._html(_GALLERY_HEAD)
+        self.level, self.share, self.phasor, self.section = (self._box(name) for name in PLOTS[:4])
+        self.gallery = Column(self._gallery_head, self._box("gallery"), sizing_mode="stretch_both")
+        self.foot, self.changes = self._html(""), self._html("")
+        self.changes.visible = False
+
+    def _html(self, text, role=None, **styles):
+        styles = {"--font": theme.FONT, **{name.replace("_", "-"): value for name, value in styles.items()}}
+        options = {"sizing_mode": "stretch_width"} if "position" not in styles else {}
+        return self._inks.host(Div(text=text, styles=styles, stylesheets=[self._style], syncable=False, margin=0, **options))
+
+    def _box(self, name):
+        """A plot with its save menu and its notice over it."""
+        return Column(self._plots[name], self._menus[name], self._notices[name], sizing_mode="stretch_both",
+                      css_classes=[f"plot-{name}"], styles={"position": "relative"})
+
+    def _start_browser_code(self):
+        models = {f"{name}_plot": plot for name, plot in self._plots.items()}
+        models |= {f"{name}_menu": menu for name, menu in self._menus.items()}
+        models |= {**self._sent, **{f"held_{name}": sent for name, sent in self._held_sent.items()}}
+        spine, section, gallery = self._spine, self._section, self._gallery
+        models |= {"cursor": self.cursor, "pressed": self._pressed, "sentence": self._sentence, "buttons": self._buttons,
+                   "gallery_head": self._gallery_head,
+                   "share_rows": spine.row_words, "share_ticks": spine.row_ticks, "share_chosen": spine.chosen,
+                   "row_text": spine.row_text, "level_cursor": spine.level_cursor, "share_cursor": spine.share_cursor,
+                   "cursor_words": spine.cursor_words,
+                   "phasor": self._phasor.chain, "phasor_held": self._phasor.held, "phasor_total": self._phasor.total,
+                   "phasor_words": self._phasor.words,
+                   "section": section.film, "section_rest": section.rest, "section_held": section.held,
+                   "section_centre": section.centre, "section_spring": section.spring, "section_frame": section.frame,
+                   "section_rear": section.rear, "section_bar": section.bar, "section_words": section.words,
+                   "gallery_marks": gallery.marks, "gallery_fills": gallery.fills, "gallery_held": gallery.held,
+                   "gallery_lines": gallery.lines, "gallery_axes": gallery.axes, "gallery_heads": gallery.heads,
+                   "gallery_words": gallery.words}
+        parts = [(HERE / f"{name}.js").read_text(encoding="utf-8") for name in SCRIPTS]
+        # In a block of its own: the arguments' names are those of the models.
+        code = "\n".join([f"const models = {{{', '.join(models)}}}", "{", *parts, "}"])
+        self._spine.level.js_on_change("inner_width", CustomJS(args=models, code=code))
+
+    def show(self, overview):
+        """Replace all data by an Overview's; the cursor keeps its frequency, the first one puts it on the highest peak."""
+        fresh = columns(overview)
+        with self._hold():
+            self._overview = overview
+            self._spine.show(overview, fresh)
+            for name, sent in self._sent.items():
+                if name != "level":
+                    sent.data = getattr(fresh, name)
+            if not len(self.cursor.data["frequency"]):
+                self.cursor.data = {"frequency": [first_cursor(overview)]}
+            self.foot.text = foot_html(overview)
+            self._compare()
+            self.dim(None)
+
+    def hold(self, overview):
+        """Keep an Overview's design in grey in every plot, with a table of what changed; None takes it away."""
+        with self._hold():
+            self._held = overview
+            fresh = None if overview is None else columns(overview)
+            self._spine.hold(fresh)
+            for name, sent in self._held_sent.items():
+                if name != "level":
+                    sent.data = getattr(fresh, name) if fresh else {key: [] for key in sent.data}
+            self._compare()
+
+    def dim(self, text):
+        """Dim the plots and say the text over them; None lights them up again."""
+        with self._hold():
+            opacity = "1" if text is None else "0.35"
+            dimmed = [*self._plots.values(), self.strip, self._sentence]
+            for model in dimmed:
+                if model.styles.get("opacity", "1") != opacity:
+                    model.styles = {**model.styles, "opacity": opacity}
+            for name, notice in self._notices.items():
+                words = text if name == "level" else LAST_GOOD
+                notice.text = "" if text is None else f'<p class="notice" role="alert">{escape(words)}</p>'
+                notice.visible = text is not None
+
+    def set_dark(self, dark):
+        """Light or dark colours everywhere."""
+        with self._hold():
+            self._inks.change(theme.palette(dark))
+            self._spine.change_colours(self._inks.palette)
+
+    def on_key(self, key, callback):
+        """Call back (no arguments) when a single key is pressed outside of text entries, unless switched off."""
+        self._listeners[key] = callback
+
+    def _on_pressed(self, attribute, old, new):
+        callback = self._listeners.get(new["key"][0] if len(new["key"]) else None)
+        if callback:
+            callback()
+
+    def _compare(self):
+        if self._overview is None:
+            return
+        self.strip.text = strip_html(self._overview, self._held)
+        self.changes.text = changes_html(self._held, self._overview) if self._held else ""
+        self.changes.visible = self._held is not None
+
+    def _hold(self):
+        document = self._spine.level.document
+        return hold_events(document) if document else nullcontext()
+
+
+def first_cursor(overview):
+    """Frequency of the highest peak of the level in the band below the estimate; of the highest level if none is."""
+    response, (low, high) = overview.response, overview.band
+    inside = (response.frequency >= low) & (response.frequency <= high)
+    sure = inside & (response.frequency < response.estimate_above)
+    level = response.level_db
+    peak = np.zeros_like(sure)
+    peak[1:-1] = (level[1:-1] > level[:-2]) & (level[1:-1] >= level[2:])
+    for wanted in (sure & peak, sure, inside):
+        if wanted.any():
+            return float(response.frequency[np.argmax(np.where(wanted, level, -np.inf))])
+    return float(response.frequency[0])
+
+
+_EMPTY = {"rows": {"re": [], "im": []}, "motion": {"re": [], "im": []}, "shapes": {"radial": [], "axial": []},
+          "nodes": {"radius": [], "height": []}, "moving": {"row": []}, "still": {"n_rows": []}}
+_BUTTONS = ('<div class="bar" role="group" aria-label="Cursor">'
+            '<button data-act="previous-peak" title="key p">‹ peak</button>'
+            '<button data-act="next-peak" title="key n">peak ›</button>'
+            '<button data-act="next-dip" title="key d">dip ›</button>'
+            '<button data-act="keys" aria-pressed="true" title="Single keys n, p, d, h on or off">keys</button></div>')
+_GALLERY_HEAD = ('<div class="bar"><b>Modes in air</b><span class="grow" data-word="details" role="status"></span>'
+                 '<button data-act="fold" data-word="fold">show in-plane</button>'
+                 '<button data-act="previous-sheet" aria-label="previous modes">‹</button>'
+                 '<span data-word="sheet"></span>'
+                 '<button data-act="next-sheet" aria-label="next modes">›</button>'
+                 '<span style="width:34px"></span></div>')
+
+
+def _menu_html(name):
+    """The small menu of a plot."""
+    forms = "".join(f'<button data-act="save" data-plot="{name}" data-form="{form}">{form.upper()}</button>'
+                    for form in ("png", "svg", "csv"))
+    pause = '<button data-act="pause" data-word="pause">pause</button>' if name == "section" else ""
+    return (f'<div class="save">{pause}<details><summary aria-label="Save the {name} plot" title="Save this plot">⋯</summary>'
+            f"<div>{forms}</div></details></div>")

@@ -1,0 +1,79 @@
+// Ties everything together; runs once a page, on the first layout of the level plot.
+const LABELS = {
+  level_plot: "Level against frequency. Left and right arrows move the cursor.",
+  share_plot: "Share of each mode against frequency. Left and right arrows move the cursor.",
+  phasor_plot: "Pressures of the modes at the cursor, head to tail",
+  section_plot: "Section of the loudspeaker, moving. Space stops and starts it.",
+  gallery_plot: "Mode shapes. Left and right arrows choose a mode, Escape none.",
+}
+const PLOTS = Object.keys(LABELS)
+const viewOf = (model) => Bokeh.index.find_one(model)
+const onScreen = (page, plot) => (viewOf(plot)?.el.getClientRects().length ?? 0) > 0
+const setWord = (page, model, key, text, hidden = false) => {
+  const element = viewOf(model)?.shadow_el.querySelector(`[data-word="${key}"]`)
+  if (!element) return
+  if (element.textContent !== text) element.textContent = text
+  element.hidden = hidden
+}
+
+// Draws on the next microtask, once however many sources of one message changed.
+const redraw = (page) => {
+  if (page.asked) return
+  page.asked = true
+  queueMicrotask(() => {
+    page.asked = false
+    if (!page.now) return
+    drawCursor(page)
+    drawRows(page)
+    drawPhasor(page)
+    drawSection(page)
+    drawGallery(page)
+    const text = sentence(page.now, page.turns, page.f)
+    if (page.m.sentence.text !== text) page.m.sentence.text = text
+  })
+}
+const reread = (page) => {
+  if (page.stale) return
+  page.stale = true
+  queueMicrotask(() => {
+    page.stale = false
+    page.now = read(page.m)
+    page.held = read(page.held_m)
+    if (!page.now) return
+    page.turns = turningPoints(page.now)
+    page.f = page.m.cursor.data.frequency[0] ?? page.now.low
+    redraw(page)
+  })
+}
+
+const SENT = ["level", "rows", "motion", "shapes", "nodes", "gallery", "moving", "still"]
+const boot = (m) => {
+  const held_m = Object.fromEntries(SENT.map((name) => [name, m[`held_${name}`]]))
+  const page = { m, held_m, now: null, held: null, turns: { peaks: [], dips: [] }, f: 0, chosen: null, keys: true, pressed: 0,
+                 unfolded: false, sheet: 0, pages: 1, tiles: [], phase: 0, moving: null, dressed: new WeakSet(),
+                 playing: !window.matchMedia("(prefers-reduced-motion: reduce)").matches }
+  for (const name of SENT) {
+    m[name].connect(m[name].properties.data.change, () => reread(page))
+    held_m[name].connect(held_m[name].properties.data.change, () => reread(page))
+  }
+  const laidOut = () => {
+    PLOTS.forEach((name) => dress(page, name))
+    setPlaying(page, page.playing)
+    redraw(page)
+  }
+  for (const name of PLOTS) {
+    const { inner_width, inner_height } = m[name].properties
+    m[name].connect(inner_width.change, laidOut)
+    m[name].connect(inner_height.change, laidOut)
+  }
+  const own = [m.buttons, m.gallery_head, ...["level", "share", "phasor", "section", "gallery"].map((n) => m[`${n}_menu`])]
+  document.addEventListener("click", (event) => {
+    const path = event.composedPath(), button = path.find((e) => e instanceof HTMLElement && e.dataset.act)
+    if (button && own.some((model) => path.includes(viewOf(model)?.el))) ACTIONS[button.dataset.act](page, button)
+  })
+  document.addEventListener("keydown", (event) => onKey(page, event))
+  reread(page)
+  laidOut()
+  return page
+}
+if (!models.level_plot.elastovox) models.level_plot.elastovox = boot(models)

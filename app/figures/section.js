@@ -1,0 +1,116 @@
+// Section to scale at rest, moving; millimetres, both sides mirrored.
+const PERIOD_MS = 1600, FRAME_MS = 30, ROOM = 0.11   // of one drawn period, between frames; drawn motion over frame radius
+
+const mirror = (radius, height, x, y) => {
+  const n = radius.length
+  for (let p = 0; p < n; p++) {
+    x[n - 1 - p] = -radius[p]
+    x[n + p] = radius[p]
+    y[n - 1 - p] = y[n + p] = height[p]
+  }
+}
+const outline = (d) => {
+  const n = d.radius.length, x = new Float32Array(2 * n), y = new Float32Array(2 * n)
+  mirror(d.radius.map((v) => 1e3 * v), d.height.map((v) => 1e3 * v), x, y)
+  return { x, y }
+}
+
+// Everything that stands still: ranges, frame, rear, scale bar, words.
+const drawSection = (page) => {
+  const { m, now, held, f } = page, plot = m.section_plot
+  const W = plot.inner_width, H = plot.inner_height
+  if (!now || !(W > 0)) return
+  const b = 1e3 * now.frame_radius, a = 1e3 * now.centre_radius
+  const chosen = sameMode(now, page.chosen)
+  const field = motionAt(now, f, chosen ? chosen.shape : null)
+  const factor = field.largest > 0 ? roundDown(ROOM * b / (1e3 * field.largest)) : 1
+  const heights = Array.from(now.height, (v) => 1e3 * v)
+  const top = Math.max(...heights, 0) + ROOM * b, half = 1.24 * b
+  const area = { top: 42, bottom: H - 24 }
+  const scale = Math.min(W / (2 * half), (area.bottom - area.top) / (top - Math.min(...heights, 0) + 0.55 * b))
+  const ux = (sx) => (sx - W / 2) / scale, uy = (sy) => top - (sy - area.top) / scale
+  plot.x_range.setv({ start: ux(0), end: ux(W) })
+  plot.y_range.setv({ start: uy(H), end: uy(0) })
+  const floor = Math.max(uy(area.bottom), Math.min(...heights, 0) - 1.1 * b)
+
+  m.section_frame.data = { xs: [[-b, -b, -half, -half], [b, b, half, half]],
+                           ys: [[-0.025 * b, 0.025 * b, 0.025 * b, -0.025 * b], [-0.025 * b, 0.025 * b, 0.025 * b, -0.025 * b]] }
+  const depth = now.rear_volume === null ? 0 : 1e9 * now.rear_volume / (Math.PI * b * b)
+  const fits = depth > 0 && -depth > floor
+  const bottom = fits ? -depth : floor
+  const post = 0.12 * b                              // a bracket under the spring
+  m.section_rear.data = depth > 0
+    ? fits ? { xs: [[-b, -b, b, b]], ys: [[0, bottom, bottom, 0]] }
+      : { xs: [broken(-b, b), broken(b, b), [-b, b]], ys: [brokenY(bottom, b), brokenY(bottom, b), [bottom, bottom]] }
+    : { xs: [[-post, post]], ys: [[floor, floor]] }
+  m.section_rest.data = outline(now)
+  m.section_held.data = held ? outline(held) : { x: [], y: [] }
+  page.moving = { field, factor, bottom, a, radius: now.radius, height: now.height, spring: now.spring_free_height !== null }
+
+  const words = { x: [], y: [], text: [], role: [], style: [], align: [] }
+  const say = (sx, sy, text, role = "muted", style = "normal", align = "left") => {
+    words.x.push(ux(sx)); words.y.push(uy(sy)); words.text.push(text)
+    words.role.push(role); words.style.push(style); words.align.push(align)
+  }
+  say(2, 10, chosen ? `Motion of the ${hertz(chosen.frequency)} mode` : `Motion at ${hertz(f)}`, "ink", "bold")
+  say(2, 27, `${chosen ? `its part at ${hertz(f)}: ` : ""}largest ${quantity(field.largest, "m")}, drawn × ${digits(factor)}`)
+  const bar = roundDown(0.5 * b)
+  m.section_bar.data = { x: [ux(4), ux(4) + bar], y: [uy(H - 9), uy(H - 9)] }
+  say(4 + bar * scale + 6, H - 9, `${digits(bar)} mm`)
+  const litres = now.rear_volume === null ? "" : now.rear_volume >= 1e-3 ? `${digits(1e3 * now.rear_volume, 2)} l` : `${digits(1e6 * now.rear_volume, 2)} ml`
+  say(W - 4, H - 9, now.rear_volume === null ? "rear open" : `rear sealed, ${litres}${fits ? "" : ", not to scale"}`, "muted", "normal", "right")
+  m.section_words.data = words
+  const n = 2 * now.radius.length
+  if (m.section.data.x.length !== n) m.section.data = { x: new Float32Array(n), y: new Float32Array(n) }
+  paintMotion(page)
+}
+const broken = (x, b) => [x, x, x - 0.03 * b, x + 0.03 * b, x, x]
+const brokenY = (bottom, b) => [0, 0.62 * bottom, 0.66 * bottom, 0.70 * bottom, 0.74 * bottom, bottom]
+
+// The moving parts at one moment; writes into the arrays that are there and says so.
+const paintMotion = (page) => {
+  const { m, moving, phase } = page
+  if (!moving || !m.section.data.x.length) return
+  const { field, factor, bottom, a, radius, height } = moving
+  const c = Math.cos(phase), s = Math.sin(phase), n = radius.length, k = 1e3 * factor
+  const x = m.section.data.x, y = m.section.data.y
+  for (let p = 0; p < n; p++) {
+    const r = 1e3 * radius[p] + k * (field.r_re[p] * c - field.r_im[p] * s)
+    const z = 1e3 * height[p] + k * (field.z_re[p] * c - field.z_im[p] * s)
+    x[n - 1 - p] = -r
+    x[n + p] = r
+    y[n - 1 - p] = y[n + p] = z
+  }
+  m.section.change.emit()
+  const z = y[n]
+  m.section_centre.data = { x0: [-a], y0: [z], x1: [a], y1: [z] }
+  m.section_spring.data = moving.spring ? coil(bottom, z, 0.35 * a) : { x: [], y: [] }
+}
+const coil = (from, to, half) => {
+  const turns = 14, x = [0], y = [from]
+  for (let i = 0; i <= turns; i++) {
+    x.push(i === 0 || i === turns ? 0 : i % 2 ? half : -half)
+    y.push(from + (to - from) * (0.06 + 0.88 * i / turns))
+  }
+  return { x: [...x, 0], y: [...y, to] }
+}
+
+// Runs until the page is left or paused; one loop a page.
+const animate = (page) => {
+  if (page.loop) return
+  page.loop = true
+  let last = 0
+  const step = (time) => {
+    if (page.m.section.document === null || !page.playing) {
+      page.loop = false
+      return
+    }
+    if (time - last >= FRAME_MS) {
+      page.phase = (page.phase + 2 * Math.PI * Math.min(time - last, 100) / PERIOD_MS) % (2 * Math.PI)
+      last = time
+      if (onScreen(page, page.m.section_plot)) paintMotion(page)
+    }
+    requestAnimationFrame(step)
+  }
+  requestAnimationFrame(step)
+}
