@@ -3,6 +3,7 @@
 import base64
 import os
 import tomllib
+import tracemalloc
 import zlib
 from dataclasses import replace
 from fractions import Fraction
@@ -304,6 +305,17 @@ def packed(data):
 def test_a_link_that_is_none_is_refused(link):
     with pytest.raises(InvalidDesign, match=r"^the link: "):
         from_link(link)
+
+
+def test_a_link_never_unpacks_to_more_than_a_file_may_hold():
+    """Ten megabytes of one letter pack into ten kilobytes; tracemalloc sees what reading them takes."""
+    link = packed(b"a" * 10**7)
+    tracemalloc.start()
+    with pytest.raises(InvalidDesign):
+        from_link(link)
+    peak = tracemalloc.get_traced_memory()[1]
+    tracemalloc.stop()
+    assert peak < 10**6
 
 
 def test_a_failed_save_leaves_the_old_file_whole(tmp_path, monkeypatch):
