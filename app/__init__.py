@@ -1,1 +1,1 @@
-"""The page: serves the engine's results to a browser. Data flows one way: state, session, worker, engine, session, figures."""
+"""The page: a design goes from the state to the engine, its results to the figures; data flows one way."""

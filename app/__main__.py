@@ -4,6 +4,7 @@ import argparse
 import ipaddress
 import os
 import sys
+import threading
 from importlib import resources
 
 DEFAULT_PORT = 5480
@@ -29,6 +30,7 @@ def main(argv=None):
     for name in ("OPENBLAS_NUM_THREADS", "OMP_NUM_THREADS", "MKL_NUM_THREADS"):
         os.environ.setdefault(name, "1")
     # Imported only now: --help and a mistyped option need no numerics and no server.
+    import engine
     from app import server
     from engine.designfile import load
     from engine.errors import InvalidDesign
@@ -44,6 +46,7 @@ def main(argv=None):
         served = server.Served(design, options.address, options.port, DEFAULT_PORT)
     except server.CannotListen as error:
         return _refuse(str(error))
+    threading.Thread(target=getattr(engine, "prepare", int), name="tables", daemon=True).start()
     return served.run(browser=not options.no_browser)
 
 

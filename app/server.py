@@ -3,6 +3,7 @@
 import errno
 import ipaddress
 import os
+import re
 import signal
 import socket
 import threading
@@ -76,7 +77,6 @@ class Served:
         for line in self.announcement():
             print(line, flush=True)
         self.server.start()
-        main.prepare(self.loop)
         if browser:
             threading.Thread(target=webbrowser.open, args=(self.url,), daemon=True).start()
         self.loop.start()
@@ -92,14 +92,13 @@ class Served:
         lines.append(f"{main.PRODUCT} is at {self.url}   (Ctrl-C ends it)")
         if not ipaddress.ip_address(self.address).is_loopback:
             lines.append(
-                f"Exposed: anyone who can reach {self.address} port {self.port} can open this page, load it with work and "
-                "read the design it starts with. There is no login, and the connection is not encrypted.")
+                f"Exposed: anyone who can reach {self.address} port {self.port} can use this page, load it with work "
+                "and read the design it starts with. There is no login, and the connection is not encrypted.")
         return lines
 
     def close(self):
-        """Stop listening, end the sessions and the worker's threads."""
+        """Stop listening and end the sessions."""
         self.server.stop(wait=False)
-        main.shut_down()
 
 
 class Hosts:
@@ -115,21 +114,22 @@ class Hosts:
         self.any_number = ip.is_unspecified
         self.names = {address}
         if ip.is_loopback or ip.is_unspecified:
-            self.names |= {"localhost", "127.0.0.1", "::1"}
+            self.names |= {"localhost", "127.0.0.1" if ip.version == 4 else "::1"}
         if not ip.is_loopback:
             self.names.add(socket.gethostname().lower())
 
     def allows(self, netloc):
         """Whether ``host:port`` is one of this server's own."""
-        host, _, port = netloc.lower().rpartition(":")
+        host, _, port = netloc.lower().rpartition(":") if re.search(r":\d+$", netloc) else (netloc.lower(), "", "80")
         if not host or port != str(self.port):
             return False
         host = host.strip("[]")
         return host in self.names or (self.any_number and _is_number(host))
 
     def origins(self):
-        """Origins for Bokeh's own websocket check; with any number allowed, `admit` is the one that checks."""
-        return ["*"] if self.any_number else sorted(f"{_bracketed(name)}:{self.port}" for name in self.names)
+        """Origins for Bokeh's own websocket check, which knows neither ranges nor IPv6: there `admit` alone checks."""
+        known = not self.any_number and not any(":" in name for name in self.names)
+        return sorted(f"{name}:{self.port}" for name in self.names) if known else ["*"]
 
 
 class Foreign(Matcher):
@@ -178,13 +178,15 @@ def free_port(address, first):
                     raise CannotListen(_why_not(error, address, port)) from None
             else:
                 return port
-    raise CannotListen(f"ports {first} to {first + PORTS_TRIED - 1} at {address} are all taken. Give a free one with --port.")
+    raise CannotListen(f"ports {first} to {first + PORTS_TRIED - 1} at {address} are all taken. "
+                       "Give a free one with --port.")
 
 
 def _why_not(error, address, port):
     """The message for an address and port that cannot be listened on."""
     if error.errno == errno.EADDRINUSE:
-        return f"port {port} at {address} is taken. Give another with --port, or leave --port out to take the next free one."
+        return (f"port {port} at {address} is taken. Give another with --port, "
+                "or leave --port out to take the next free one.")
     if error.errno == errno.EACCES:
         return f"port {port} needs rights this user does not have. Give one above 1023 with --port."
     if error.errno == errno.EADDRNOTAVAIL:

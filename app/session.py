@@ -6,7 +6,9 @@ from functools import partial
 import param
 
 from app import worker
-from app.state import DesignState
+from app.state import DesignState, samples
+
+__all__ = ["Problem", "Session", "samples", "visit"]
 
 
 @dataclass(frozen=True)
@@ -31,10 +33,10 @@ class Session(param.Parameterized):
     """
 
     state = param.ClassSelector(class_=DesignState, constant=True)
-    overview = param.Parameter(doc="engine.summary.Overview of the last design that could be computed, None before the first")
-    held = param.Parameter(doc="engine.summary.Overview of the held design in the band shown, or None")
+    overview = param.Parameter(doc="Overview of the last design that could be computed, or None")
+    held = param.Parameter(doc="Overview of the held design in the band shown, or None")
     busy = param.Boolean(default=False, doc="whether a newer design than the one shown is being computed")
-    problem = param.ClassSelector(class_=Problem, allow_None=True, doc="why the newest design is not the one shown, or None")
+    problem = param.ClassSelector(class_=Problem, allow_None=True, doc="why the newest design is not shown, or None")
 
     def __init__(self, state, document=None, updater=None):
         super().__init__(state=state)

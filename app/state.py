@@ -3,20 +3,23 @@
 import re
 import time
 from dataclasses import dataclass, fields
+from importlib import resources
 
 import param
 
+from app.values import in_si, on_screen
 from engine import design as designs
+from engine import designfile
 from engine.errors import InvalidDesign
-from engine.fields import UNITS, display_value, si_value
+from engine.fields import display_value
 
 DEFAULT_BAND = (20.0, 5e3)
-BANDS = ((20.0, 2e3), DEFAULT_BAND, (20.0, 10e3), (100.0, 10e3))
+BANDS = ((20.0, 2e3), DEFAULT_BAND, (20.0, 10e3), (100.0, 10e3))   # offered; others can be typed
+SAMPLES = "sample_designs"    # the package of bundled designs
 BAND_LIMITS = (10.0, 10e3)
 NARROWEST_BAND = 1.25        # highest over lowest frequency
 UNDO_STEPS = 200
 SAME_STEP = 0.6              # s: a change of the same control so soon after its release belongs to the same step
-TYPED = re.compile(r"([+-]?(?:\d+\.?\d*|\.\d+)(?:e[+-]?\d+)?)\s*(.*)", re.IGNORECASE)
 
 
 @dataclass(frozen=True)
@@ -61,7 +64,7 @@ class DesignState(param.Parameterized):
     """A design under way. `groups` holds the values on the controls, `design` the last valid design they made."""
 
     design = param.ClassSelector(class_=designs.Design, doc="the last valid design")
-    invalid = param.ClassSelector(class_=Invalid, allow_None=True, doc="why the controls' values are no design, or None")
+    invalid = param.ClassSelector(class_=Invalid, allow_None=True, doc="why the values set are no design, or None")
     held = param.ClassSelector(class_=designs.Design, allow_None=True, doc="the design held as a reference, or None")
     band = param.Tuple(default=DEFAULT_BAND, length=2, doc="(low, high) Hz shown")
     can_undo = param.Boolean(default=False)
@@ -127,25 +130,44 @@ class DesignState(param.Parameterized):
         self._saved = design
         self._show(design)
 
-    def saved(self):
-        """The design as it is now is on file."""
+    def open_file(self, data, name):
+        """Begin with the design of a file's bytes; InvalidDesign names the file, what is wrong and how to mend it."""
+        self.open(designfile.from_bytes(data, name))
+
+    def open_sample(self, name):
+        """Begin with a bundled design (a name that `samples` gives)."""
+        self.open_file(resources.files(SAMPLES).joinpath(name).read_bytes(), name)
+
+    def open_link(self, text):
+        """Begin with the design a link carries; InvalidDesign says what is wrong with it."""
+        self.open(designfile.from_link(text))
+
+    def save(self):
+        """File name and text of the design as it is now, which counts as saved."""
         self._saved = self.design
         self._look()
+        words = re.sub(r"[^a-z0-9]+", "-", self.design.name.lower()).strip("-")
+        return f"{words or 'design'}.toml", designfile.dumps(self.design)
+
+    def link(self):
+        """The text by which a link carries the design."""
+        return designfile.to_link(self.design)
 
     def set_band(self, band):
         """Show another band; ValueError says what is wrong with it."""
         low, high = (float(edge) for edge in band)
         least, most = BAND_LIMITS
         if not (least <= low and high <= most and high >= NARROWEST_BAND * low):
-            raise ValueError(f"The band must lie within {least:g} Hz to {most / 1e3:g} kHz and rise by a quarter at least, "
-                             "for example 20 Hz – 5 kHz.")
+            raise ValueError(f"The band must lie within {least:g} Hz to {most / 1e3:g} kHz and rise by a quarter at "
+                             "least, for example 20 Hz – 5 kHz.")
         self.band = (low, high)
 
     def _moved(self, name, events):
         """Controls of one group were moved: their display values become SI values."""
         if self._filling:
             return
-        changes = {f"{name}.{event.name}": in_si(designs.field_of(f"{name}.{event.name}"), event.new) for event in events}
+        moved = {f"{name}.{event.name}": event.new for event in events}
+        changes = {key: in_si(designs.field_of(key), shown) for key, shown in moved.items()}
         law = changes.get("film.law")
         if law is not None:
             self._law_parameters[self.design.film.law] = self.design.film.law_parameters
@@ -192,10 +214,9 @@ class DesignState(param.Parameterized):
         self._filling = True
         try:
             for name, values in self.groups.items():
-                values.param.update(**{
-                    field.name: on_screen(field, self._pending.get(f"{name}.{field.name}", getattr(getattr(self.design, name),
-                                                                                                    field.name)))
-                    for field in shown_fields()[name]})
+                keys = {field: f"{name}.{field.name}" for field in shown_fields()[name]}
+                values.param.update(**{field.name: on_screen(field, self._pending.get(key, self.design.value(key)))
+                                       for field, key in keys.items()})
         finally:
             self._filling = False
 
@@ -205,83 +226,12 @@ class DesignState(param.Parameterized):
                           can_redo=bool(self._redo), dirty=self.design != self._saved)
 
 
+def samples():
+    """Bundled designs: (file name, design's name), by file name."""
+    files = sorted((f for f in resources.files(SAMPLES).iterdir() if f.name.endswith(".toml")), key=lambda f: f.name)
+    return [(f.name, designfile.from_bytes(f.read_bytes(), f.name).name) for f in files]
+
+
 def shown_names(group):
     """Names of the fields of a group that have a control."""
     return tuple(field.name for field in shown_fields()[group])
-
-
-def on_screen(field, value):
-    """The value a control shows for an SI value."""
-    if field.metadata["kind"] == "number":
-        return display_value(field, value)
-    return value
-
-
-def in_si(field, shown):
-    """The SI value of what a control shows."""
-    if field.metadata["kind"] == "number":
-        return si_value(field, shown)
-    return shown
-
-
-def typed_number(field, text):
-    """Display value of a typed number, with or without a unit ("1.3", "52 mm", "0.052 m").
-
-    Raises
-    ------
-    ValueError
-        If the text is no number, or its unit is not one of the field's kind.
-    """
-    own = UNITS[field.metadata["unit"]]
-    match = TYPED.fullmatch(text.strip().replace("−", "-").replace(",", "."))
-    if not match:
-        raise ValueError(f"{text.strip()[:20]!r} is no number. Type one such as {example(field)}.")
-    digits, symbol = match.groups()
-    symbol = symbol.strip().replace("um", "µm").replace("μ", "µ")
-    if symbol in ("", own.symbol):
-        return float(digits)
-    if symbol not in UNITS or UNITS[symbol].si != own.si:
-        raise ValueError(f"{symbol[:12]!r} is no unit for this. Type it in {own.symbol or 'plain digits'}, as {example(field)}.")
-    return own.display(UNITS[symbol].si_value(float(digits)))
-
-
-def example(field):
-    """A well-typed value of a field: its default."""
-    return f"{display_value(field, field.default):g} {field.metadata['unit']}".strip()
-
-
-def typed_list(text):
-    """Tuple of numbers typed with commas or blanks between; with semicolons, a tuple of such tuples.
-
-    Raises
-    ------
-    ValueError
-        If an item is no number.
-    """
-    if ";" in text:
-        return tuple(typed_list(part) for part in text.split(";") if part.strip())
-    items = text.replace(",", " ").split()
-    try:
-        return tuple(float(item) for item in items)
-    except ValueError:
-        raise ValueError("Type numbers with blanks between, pairs with semicolons between, or nothing.") from None
-
-
-def list_text(value):
-    """A tuple as `typed_list` reads it."""
-    if value and isinstance(value[0], tuple):
-        return "; ".join(list_text(row) for row in value)
-    return " ".join(f"{item:.15g}" for item in value)
-
-
-def typed_band(text):
-    """(low, high) in Hz of a typed band: "20 Hz – 5 kHz", "20-5000", "100 to 10k"; ValueError if it is none."""
-    found = re.findall(r"(\d+\.?\d*|\.\d+)\s*(k?)(?:hz)?", text.lower())
-    if len(found) != 2:
-        raise ValueError("Type two frequencies, for example 20 Hz – 5 kHz.")
-    return tuple(float(digits) * (1e3 if kilo else 1.0) for digits, kilo in found)
-
-
-def band_text(band):
-    """A band as it is written on the screen."""
-    return " – ".join(f"{edge / 1e3:g} kHz" if edge >= 1e3 else f"{edge:g} Hz" for edge in band)

@@ -14,15 +14,16 @@ from engine.errors import InvalidDesign, NoRestState, NotConverged
 
 N_THREADS = 2            # one visitor dragging must not make another wait for a whole computation
 REMEMBERED = 24          # overviews kept for the whole process: undo, redo and a sample's first sight cost nothing
+KINDS = {InvalidDesign: "invalid", NoRestState: "no rest state", NotConverged: "not converged"}
 
 log = logging.getLogger(__name__)
 
 
 @dataclass(frozen=True)
 class Failure:
-    """Why there is no result: its kind ("invalid", "no rest state", "not converged", "unexpected"), in words, and the field."""
+    """Why there is no result."""
 
-    kind: str
+    kind: str                # "invalid", "no rest state", "not converged" or "unexpected"
     text: str
     key: str | None = None
 
@@ -92,7 +93,7 @@ class Updater:
 
 
 def attempt(compute, wish):
-    """The outcome of one computation; an error nobody foresaw is logged and becomes an outcome too, so the page lives on."""
+    """The outcome of one computation; an unforeseen error is logged and becomes one too: the page lives on."""
     try:
         return Outcome(wish, compute(*wish))
     except Exception as error:
@@ -104,7 +105,7 @@ def attempt(compute, wish):
 
 def describe(error):
     """The failure an exception of a computation is."""
-    for kind, exception in (("invalid", InvalidDesign), ("no rest state", NoRestState), ("not converged", NotConverged)):
+    for exception, kind in KINDS.items():
         if isinstance(error, exception):
             return Failure(kind, str(error), getattr(error, "key", None))
     return Failure("unexpected", "This design could not be computed, for a reason of the program's own "

@@ -1,0 +1,189 @@
+"""Sliders with typed entry, and the other controls, generated from the design's field metadata.
+
+A group of controls is one component: its browser code (controls.js) draws native inputs, so that a page opens fast and
+every input is the browser's own for pointer, keyboard and screen readers. What a person does comes back as the property
+`moved`, which the server coalesces: while a slider moves fast, the latest place wins.
+"""
+
+from pathlib import Path
+from typing import ClassVar
+
+import panel as pn
+import param
+from panel.custom import JSComponent
+
+from app.state import BANDS, shown_fields
+from app.values import (
+    band_text,
+    from_slider,
+    meaning_text,
+    on_slider,
+    slider_scale,
+    typed_band,
+    typed_list,
+    typed_number,
+    value_text,
+)
+
+HERE = Path(__file__).parent
+GROUP_CSS, COLUMN_CSS = ((HERE / name).read_text(encoding="utf-8") for name in ("controls.css", "column.css"))
+FOLDED = ("air",)            # groups that begin folded
+BAND_MEANING = "Frequencies shown, and the band that mean level, ripple and shares refer to. 10 Hz to 10 kHz."
+
+
+class Group(JSComponent):
+    """A heading that folds the controls below it.
+
+    Parameters
+    ----------
+    state : app.state.DesignState
+    group : str
+        Name of the group.
+    """
+
+    title = param.String(constant=True)
+    group = param.String(constant=True)
+    open = param.Boolean(default=True)
+    fields = param.List(doc="what does not change of each field: name, kind, label, meaning, scale, options")
+    shown = param.Dict(doc="field name -> text, place, value, message, hidden, n (of the last move answered)")
+    moved = param.Dict(doc="the person's last move: name, n, and place, text or value; whether the control was let go")
+
+    _esm = HERE / "controls.js"
+    _stylesheets: ClassVar = [GROUP_CSS]
+
+    def __init__(self, state, group):
+        self._state = state
+        self._blamed, self._typed, self._answered = {}, {}, {}
+        self._build(group)
+        super().__init__(title=group.capitalize(), group=group, open=group not in FOLDED, fields=self._specs(),
+                         shown=self._now(), css_classes=["group", f"group-{group}"], margin=0,
+                         sizing_mode="stretch_width")
+        self.param.watch(lambda event: self._take(event.new), "moved")
+
+    def say(self, name, text):
+        """Show a message at one field (None: at none), and none at the others."""
+        self._blamed = {name: text} if name and text else {}
+        self._show()
+
+    def _build(self, group):
+        """Take up the group's fields and watch their values."""
+        self._fields = {field.name: field for field in shown_fields()[group]}
+        self._values = self._state.groups[group]
+        self._values.param.watch(self._refresh, list(self._fields))
+
+    def _specs(self):
+        """What does not change of each field."""
+        return [{"name": name, "kind": field.metadata["kind"], "label": field.metadata["label"],
+                 "meaning": meaning_text(field), "options": list(field.metadata["choices"]),
+                 **(slider_scale(field) if field.metadata["bounds"] else {})} for name, field in self._fields.items()]
+
+    def _now(self):
+        """What each field shows now."""
+        return {name: {**self._field_now(name), "n": self._answered.get(name, 0),
+                       "message": self._typed.get(name) or self._blamed.get(name, "")} for name in self._names()}
+
+    def _names(self):
+        return self._fields
+
+    def _field_now(self, name):
+        """Text, place or value of one field, and whether it has no effect and is left out."""
+        field, value = self._fields[name], getattr(self._values, name)
+        if field.metadata["kind"] in ("choice", "flag"):
+            return {"value": value, "hidden": False}
+        place = on_slider(field, value) if field.metadata["bounds"] else None
+        return {"text": value_text(field, value), "place": place, "hidden": self._without_effect(name)}
+
+    def _without_effect(self, name):
+        """Whether a field changes nothing as the others stand: a volume behind an open film, a law's parameters."""
+        if self.group == "rear" and name in ("volume", "loss_factor"):
+            return self._values.kind == "open"
+        return name == "law_parameters" and self._values.law == "neo-hookean"
+
+    def _refresh(self, *_):
+        """The state's values changed: messages about earlier typing go."""
+        self._typed = {}
+        self._show()
+
+    def _show(self):
+        """Send what each field shows."""
+        self.shown = self._now()
+
+    def _take(self, move):
+        """A person's move: to the state, or a message at the field; the text or place is set right either way."""
+        name = move["name"]
+        self._answered[name] = move["n"]
+        try:
+            self._set(name, move)
+        except ValueError as error:
+            self._typed = {name: str(error)}
+        else:
+            self._typed = {}
+        self._show()
+        if move["released"]:
+            self._state.release()
+
+    def _set(self, name, move):
+        """Set the state's value from a move; ValueError if what was typed is no value."""
+        field = self._fields[name]
+        if "place" in move:
+            value = from_slider(field, move["place"])
+        elif "text" in move and move["text"] == value_text(field, getattr(self._values, name)):
+            return
+        elif "text" in move and field.metadata["kind"] == "list":
+            value = typed_list(move["text"], nested=name == "relaxation")
+        elif "text" in move:
+            value = typed_number(field, move["text"])
+        else:
+            value = move["value"]
+        if field.metadata["kind"] == "count":
+            if value != round(value):
+                raise ValueError(f"{value:g} is not a whole number.")
+            value = round(value)
+        setattr(self._values, name, value)
+
+
+class Band(Group):
+    """The band shown: typed, or one of a few."""
+
+    def _build(self, group):
+        self._state.param.watch(self._refresh, "band")
+
+    def _specs(self):
+        return [{"name": "band", "kind": "band", "label": "Band shown", "meaning": BAND_MEANING,
+                 "options": [band_text(band) for band in BANDS]}]
+
+    def _names(self):
+        return ("band",)
+
+    def _field_now(self, name):
+        return {"text": band_text(self._state.band), "hidden": False}
+
+    def _set(self, name, move):
+        self._state.set_band(typed_band(move["text"]))
+
+
+class Controls:
+    """The column of all controls.
+
+    Parameters
+    ----------
+    state : app.state.DesignState
+    """
+
+    def __init__(self, state):
+        self.groups = {name: Group(state, name) for name in shown_fields()}
+        self.view = pn.Column(*self.groups.values(), Band(state, "band"), css_classes=["controls"],
+                              stylesheets=[COLUMN_CSS], margin=0)
+
+    def blame(self, key, text):
+        """Show a message at one control, and none at the others.
+
+        Parameters
+        ----------
+        key : str or None
+            "group.name" of the control; None shows the message nowhere.
+        text : str
+        """
+        at, _, name = (key or "").partition(".")
+        for group, controls in self.groups.items():
+            controls.say(name if group == at else None, text)

@@ -1,0 +1,93 @@
+"""The pages in one frame: what a visitor gets."""
+
+import logging
+from urllib.parse import parse_qs
+
+import panel as pn
+import panel_material_ui as pmui
+from panel.reactive import Syncable
+
+from app import theme
+from app.pages.header import Header, tell
+from app.pages.response import ResponsePage
+from app.session import visit
+
+PRODUCT = "Elastovox"
+INPUT_DELAY = 20           # ms the server waits for more input before it acts; Panel's own 50 can be felt
+HEADER_PX = 44
+FRAME = {
+    "& .header": {"backgroundColor": "background.default", "color": "text.primary", "boxShadow": "none",
+                  "borderBottom": "1px solid", "borderColor": "divider", "backgroundImage": "none"},
+    "& .MuiToolbar-root": {"minHeight": f"{HEADER_PX}px !important", "margin": 0, "paddingX": "16px !important"},
+    "& .main": {"backgroundColor": "background.default"},
+}
+
+log = logging.getLogger(__name__)
+
+
+def page(design):
+    """The whole page of one visitor, beginning with a design, or with the one in the page's own address.
+
+    Parameters
+    ----------
+    design : engine.design.Design
+
+    Returns
+    -------
+    panel_material_ui.Page
+    """
+    pn.extension(notifications=True, exception_handler=failed)
+    lower_input_delay()
+    session = visit(design, pn.state.curdoc)
+    open_address(session.state)
+    header = Header(session, PRODUCT)
+    response = ResponsePage(session, dark=pn.config.theme == "dark")
+    frame = pmui.Page(header=[header], main=[response.view], theme_config=colours(), sx=FRAME, busy_indicator=None,
+                      meta_title=PRODUCT, sizing_mode="stretch_both")
+    frame.param.watch(lambda event: response.set_dark(event.new), "dark_theme")
+    session.start()
+    return frame
+
+
+def open_address(state):
+    """Begin with the design in the address (``?d=...``); a bad one is told, and leaves both the design and the address.
+
+    Parameters
+    ----------
+    state : app.state.DesignState
+    """
+    location = pn.state.location
+    given = parse_qs((location.search or "").lstrip("?"), keep_blank_values=True).get("d") if location else None
+    if not given:
+        return
+    try:
+        state.open_link(given[0])
+    except ValueError as error:
+        location.search = ""
+        text = f"{str(error)[:1].upper()}{str(error)[1:]} Shown instead: {state.design.name}."
+        pn.state.onload(lambda: tell(text))
+
+
+def failed(error):
+    """Tell the visitor of an error nobody foresaw, and the terminal all about it."""
+    log.error("error in a callback", exc_info=error)
+    tell(f"The program failed at this ({type(error).__name__}). Undo the last step, or open the page again; "
+         "the terminal has the details.")
+
+
+def lower_input_delay():
+    """Have the server wait only briefly for more input before it acts on a moving slider."""
+    Syncable._debounce = INPUT_DELAY
+
+
+def colours():
+    """The frame's colours, light and dark, from the same palette as the figures."""
+    return {mode: {"palette": _palette(theme.palette(mode == "dark")), "typography": {"fontFamily": theme.FONT}}
+            for mode in ("light", "dark")}
+
+
+def _palette(roles):
+    """The frame's palette out of the figures' roles."""
+    return {"primary": {"main": roles.pumping}, "error": {"main": roles.warn}, "divider": roles.faint,
+            "background": {"default": roles.page, "paper": roles.page},
+            "text": {"primary": roles.ink, "secondary": roles.muted}}

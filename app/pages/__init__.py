@@ -1,0 +1,1 @@
+"""The pages of the product and the header they share; layout only."""

@@ -1,0 +1,102 @@
+"""The slim header every page shares: names, hold, undo, redo, open, save, link, samples."""
+
+import base64
+import binascii
+from pathlib import Path
+from typing import ClassVar
+
+import panel as pn
+import param
+from panel.custom import JSComponent
+
+from app.session import samples
+
+BESIDE = Path(__file__).parent.parent
+LARGEST_FILE = 64 * 1024          # bytes; the browser looks before it sends, so that the connection lives
+
+
+class Header(JSComponent):
+    """Names and actions; what it is told goes to the session's state.
+
+    Parameters
+    ----------
+    session : app.session.Session
+    product : str
+        Name of the product.
+    """
+
+    product = param.String()
+    design_name = param.String()
+    samples = param.List(doc="(file name, words) of the bundled designs")
+    held = param.Boolean()
+    can_undo = param.Boolean()
+    can_redo = param.Boolean()
+    dirty = param.Boolean()
+    busy = param.Boolean()
+
+    _esm = BESIDE / "header.js"
+    _stylesheets: ClassVar = [(BESIDE / "header.css").read_text(encoding="utf-8")]
+
+    def __init__(self, session, product):
+        self._session = session
+        super().__init__(product=product, samples=samples(), margin=0, sizing_mode="stretch_width", **self._seen())
+        session.state.param.watch(self._show, ["design", "held", "can_undo", "can_redo", "dirty"])
+        session.param.watch(self._show, "busy")
+
+    def _seen(self):
+        """What the header shows of the session."""
+        state = self._session.state
+        return {"design_name": state.design.name, "held": state.held is not None, "can_undo": state.can_undo,
+                "can_redo": state.can_redo, "dirty": state.dirty, "busy": self._session.busy}
+
+    def _show(self, *_):
+        """Show the session as it is now."""
+        self.param.update(**self._seen())
+
+    def _handle_msg(self, message):
+        """Do what the browser asks; a refusal (InvalidDesign is a ValueError) is told in words."""
+        try:
+            self._do(message)
+        except ValueError as error:
+            tell(str(error))
+            self.param.trigger("design_name")
+
+    def _do(self, message):
+        """One request of the browser."""
+        state = self._session.state
+        if "rename" in message:
+            state.rename(message["rename"])
+        elif "too_large" in message:
+            tell(f"{message['file']} has {message['too_large'] / 1024:.0f} kB; a design file has at most "
+                 f"{LARGEST_FILE // 1024} kB. Choose a design file, as “save” writes it.")
+        elif "content" in message:
+            state.open_file(_bytes(message), message["file"])
+        elif "sample" in message:
+            state.open_sample(message["sample"])
+        else:
+            self._act(message["act"])
+
+    def _act(self, act):
+        """One of the header's buttons, or its key."""
+        state = self._session.state
+        if act == "save":
+            filename, text = state.save()
+            self._send_msg({"download": {"filename": filename, "text": text}})
+        elif act == "link":
+            self._send_msg({"link": "d=" + state.link()})
+        else:
+            {"hold": self._session.hold, "undo": state.undo, "redo": state.redo}[act]()
+
+
+def tell(text):
+    """Show a refusal on the page until it is closed."""
+    if pn.state.notifications is not None:
+        pn.state.notifications.error(text, duration=0)
+
+
+def _bytes(message):
+    """The bytes of a file the browser sent; a size over the limit is cut by one byte more, which the reader refuses."""
+    try:
+        return base64.b64decode(message["content"], validate=True)[:LARGEST_FILE + 1]
+    except (binascii.Error, TypeError):
+        raise ValueError(f"{message['file']} did not arrive whole. Open it again.") from None

@@ -1,0 +1,70 @@
+"""The first page: what it sounds like, which motion makes each peak, whether it is safe to drive. Layout only."""
+
+from pathlib import Path
+
+import panel as pn
+from bokeh.models import Column
+
+from app.controls import Controls
+from app.figures.board import Board
+
+BESIDE = Path(__file__).parent.parent
+PAGE_CSS, PLOTS_CSS, PART_CSS = ((BESIDE / name).read_text(encoding="utf-8")
+                                 for name in ("page.css", "plots.css", "part.css"))
+
+
+class ResponsePage:
+    """Controls at the left, the figures of one design beside them.
+
+    Parameters
+    ----------
+    session : app.session.Session
+    dark : bool
+        Whether to begin with the dark palette.
+    """
+
+    def __init__(self, session, dark=False):
+        self.session = session
+        self.controls = Controls(session.state)
+        self.board = Board(dark)
+        self.view = pn.Column(self.controls.view, self.plots(), css_classes=["page"], stylesheets=[PAGE_CSS], margin=0,
+                              sizing_mode="stretch_both")
+        session.param.watch(self.show, ["overview", "problem"])
+        session.param.watch(lambda event: self.board.hold(event.new), "held")
+        for key, act in {"h": session.hold, "u": session.state.undo, "r": session.state.redo}.items():
+            self.board.on_key(key, act)
+        self.show()
+
+    def plots(self):
+        """The figures in their places: the frequency axis is the spine, what happens at the cursor beside it."""
+        board = self.board
+        spine = _part("spine", strip=board.strip, sentence=board.sentence, level=board.level, share=board.share)
+        side = _part("side", section=board.section, changes=board.changes, phasor=board.phasor)
+        whole = Column(spine, side, _named(board.gallery, "gallery"), _named(board.foot, "foot"),
+                       stylesheets=[PLOTS_CSS], sizing_mode="stretch_both")
+        return pn.pane.Bokeh(whole, css_classes=["plots", "region-plots"], margin=0, sizing_mode="stretch_both")
+
+    def show(self, *events):
+        """Show the last good overview, and say in words why a newer design is not shown."""
+        session = self.session
+        if session.overview is not None and (not events or any(event.name == "overview" for event in events)):
+            self.board.show(session.overview)
+        problem = session.problem
+        self.controls.blame(problem and problem.key, problem.text if problem else "")
+        self.board.dim(problem and problem.text)
+
+    def set_dark(self, dark):
+        """Light or dark."""
+        self.board.set_dark(dark)
+
+
+def _part(name, **figures):
+    """Figures one below the other."""
+    return Column(*(_named(figure, key) for key, figure in figures.items()), css_classes=[f"region-{name}"],
+                  stylesheets=[PART_CSS], sizing_mode="stretch_both")
+
+
+def _named(figure, name):
+    """The figure with the class its place is known by."""
+    figure.css_classes = [*figure.css_classes, f"region-{name}"]
+    return figure

@@ -1,0 +1,135 @@
+"""What a control shows of a field and takes from a person: display values, texts, places on a slider."""
+
+import math
+import re
+
+from engine.fields import (
+    UNITS,
+    at_slider_position,
+    bounds_text,
+    display_step,
+    display_value,
+    format_value,
+    si_value,
+    slider_position,
+)
+
+TYPED = re.compile(r"([+-]?(?:\d+\.?\d*|\.\d+)(?:e[+-]?\d+)?)\s*(.*)", re.IGNORECASE)
+LOG_STEP = 0.01              # a key press on a logarithmic slider changes the value by this ratio
+LOG_POSITIONS = 1e4          # what such a slider counts from end to end
+
+
+def on_screen(field, value):
+    """The value a control shows for an SI value."""
+    if field.metadata["kind"] == "number":
+        return display_value(field, value)
+    return value
+
+
+def in_si(field, shown):
+    """The SI value of what a control shows."""
+    if field.metadata["kind"] == "number":
+        return si_value(field, shown)
+    return shown
+
+
+def typed_number(field, text):
+    """Display value of a typed number, with or without a unit ("1.3", "52 mm", "0.052 m").
+
+    Raises
+    ------
+    ValueError
+        If the text is no number, or its unit is not one of the field's kind.
+    """
+    own = UNITS[field.metadata["unit"]]
+    match = TYPED.fullmatch(text.strip().replace("−", "-").replace(",", "."))
+    if not match:
+        raise ValueError(f"{text.strip()[:20]!r} is no number. Type one such as {example(field)}.")
+    digits, symbol = match.groups()
+    symbol = symbol.strip().replace("um", "µm").replace("μ", "µ")
+    if symbol in ("", own.symbol):
+        return float(digits)
+    if symbol not in UNITS or UNITS[symbol].si != own.si:
+        raise ValueError(f"{symbol[:12]!r} is no unit for this. Type it as {example(field)}.")
+    return own.display(UNITS[symbol].si_value(float(digits)))
+
+
+def example(field):
+    """A well-typed value of a field: its default."""
+    return f"{display_value(field, field.default):g} {field.metadata['unit']}".strip()
+
+
+def typed_list(text, nested=False):
+    """Tuple of numbers typed with commas or blanks between; nested: of such tuples, with semicolons between.
+
+    Raises
+    ------
+    ValueError
+        If an item is no number.
+    """
+    if nested:
+        return tuple(typed_list(part) for part in text.split(";") if part.strip())
+    items = text.replace(",", " ").split()
+    try:
+        return tuple(float(item) for item in items)
+    except ValueError:
+        raise ValueError("Type numbers with blanks between, pairs with semicolons between, or nothing.") from None
+
+
+def list_text(value):
+    """A tuple as `typed_list` reads it."""
+    if value and isinstance(value[0], tuple):
+        return "; ".join(list_text(row) for row in value)
+    return " ".join(f"{item:.15g}" for item in value)
+
+
+def typed_band(text):
+    """(low, high) in Hz of a typed band: "20 Hz – 5 kHz", "20-5000", "100 to 10k"; ValueError if it is none."""
+    found = re.findall(r"(\d+\.?\d*|\.\d+)\s*(k?)(?:hz)?", text.lower())
+    if len(found) != 2:
+        raise ValueError("Type two frequencies, for example 20 Hz – 5 kHz.")
+    return tuple(float(digits) * (1e3 if kilo else 1.0) for digits, kilo in found)
+
+
+def band_text(band):
+    """A band as it is written on the screen."""
+    return " – ".join(f"{edge / 1e3:g} kHz" if edge >= 1e3 else f"{edge:g} Hz" for edge in band)
+
+
+def value_text(field, shown):
+    """A display value as its control writes it, with the unit."""
+    return list_text(shown) if field.metadata["kind"] == "list" else format_value(field, in_si(field, shown))
+
+
+def meaning_text(field):
+    """What a field means, and its allowed range where it has one."""
+    return field.metadata["meaning"] + (f". {bounds_text(field)}." if field.metadata["bounds"] else ".")
+
+
+def slider_scale(field):
+    """Start, end and step of a field's slider: display values, or positions on a logarithmic scale."""
+    about = field.metadata
+    low, high = about["bounds"]
+    if about["scale"] == "log":
+        step = LOG_POSITIONS * math.log1p(LOG_STEP) / math.log(high / about["log_from"])
+        return {"start": 0.0, "end": LOG_POSITIONS, "step": step}
+    return {"start": display_value(field, low), "end": display_value(field, high), "step": display_step(field)}
+
+
+def on_slider(field, shown):
+    """Place of a display value on the field's slider, within its ends."""
+    low, high = field.metadata["bounds"]
+    inside = min(max(in_si(field, shown), low), high)
+    if field.metadata["scale"] == "log":
+        return LOG_POSITIONS * slider_position(field, inside)
+    return on_screen(field, inside)
+
+
+def from_slider(field, place):
+    """Display value at a place of the field's slider; round in its digits."""
+    if field.metadata["scale"] == "log":
+        position = place / LOG_POSITIONS
+    else:
+        low, high = (display_value(field, bound) for bound in field.metadata["bounds"])
+        position = (place - low) / (high - low)
+    return on_screen(field, at_slider_position(field, position))
