@@ -9,11 +9,8 @@ from dataclasses import asdict, dataclass
 
 import numpy as np
 
-FONT = "system-ui, 'Segoe UI', Roboto, 'Helvetica Neue', Arial, 'DejaVu Sans', sans-serif"
+FONT = "'Segoe UI', Roboto, 'Helvetica Neue', Arial, 'DejaVu Sans', sans-serif"
 LARGE_PX, TEXT_PX, SMALL_PX = 20, 13, 11
-KIND_ROLE = {"pumping": "pumping", "transverse": "transverse", "in-plane": "in_plane"}
-KIND_DASH = {"pumping": [], "transverse": [9, 2], "in-plane": [2, 2]}
-KIND_WIDTH = {"pumping": 2.4, "transverse": 1.7, "in-plane": 1.7}
 DIVERGING_STEPS = 129
 
 
@@ -42,7 +39,7 @@ class Palette:
 
 LIGHT = Palette(page="#fbfaf7", ink="#1c2934", muted="#56636e", faint="#e3e0d8", held="#aeb4b9", accent="#a85a00",
                 pumping="#1c2934", transverse="#1f6796", in_plane="#80756b", adds="#642a75", cancels="#17694b",
-                estimate="#f0ede4", warn="#b3261e")
+                estimate="#f0ece1", warn="#b3261e")
 DARK = Palette(page="#14191d", ink="#e4e8ea", muted="#9ca8b1", faint="#2b333a", held="#59646d", accent="#f0a540",
                pumping="#e4e8ea", transverse="#62b0e0", in_plane="#b3a698", adds="#d394e2", cancels="#52bd8e",
                estimate="#1e252a", warn="#ff8f80")
@@ -117,6 +114,11 @@ def hertz(frequency):
 
 
 _PREFIXES = ((1e9, "G"), (1e6, "M"), (1e3, "k"), (1.0, ""), (1e-3, "m"), (1e-6, "µ"), (1e-9, "n"))
+
+
+def band_words(band):
+    """A band (low, high) in Hz: "20 Hz – 5 kHz"."""
+    return " – ".join(hertz(f) if f < 1000 else f"{digits(f / 1000)} kHz" for f in band)
 
 
 def quantity(value, unit, significant=3):

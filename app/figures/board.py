@@ -21,7 +21,7 @@ HERE = Path(__file__).parent
 SCRIPTS = ("format", "reading", "words", "spine", "phasor", "section", "gallery", "save", "cursor", "boot")
 SENT = ("level", "rows", "motion", "shapes", "nodes", "gallery", "moving", "still")
 PLOTS = ("level", "share", "phasor", "section", "gallery")
-LAST_GOOD = "last good state"
+LAST_GOOD = '<p class="notice aside">last good state</p>'
 
 
 class Board:
@@ -44,9 +44,10 @@ class Board:
                          for name in PLOTS}
         for notice in self._notices.values():
             notice.visible = False
-        self._sent = {"level": self._spine.level_source, "gallery": self._gallery.modes,
+        spine, modes = self._spine, self._gallery.modes
+        self._sent = {"level": spine.level_source, "gallery": modes,
                       **{name: source(name, **_EMPTY[name]) for name in _EMPTY}}
-        self._held_sent = {"level": self._spine.held_source, "gallery": source("held_gallery", **self._gallery.modes.data),
+        self._held_sent = {"level": spine.held_source, "gallery": source("held_gallery", **modes.data),
                            **{name: source(f"held_{name}", **_EMPTY[name]) for name in _EMPTY}}
         self.cursor = source("cursor", frequency=[])
         self._pressed = source("pressed", key=[], count=[])
@@ -59,7 +60,8 @@ class Board:
 
     def _place(self):
         self.strip = self._html("")
-        self._sentence = self._html("", role="status")
+        self._sentence = self._html("")
+        self._sentence.css_classes = ["sentence"]
         self._buttons = self._html(_BUTTONS)
         self._buttons.sizing_mode = None
         self.sentence = Row(self._sentence, self._buttons, sizing_mode="stretch_width")
@@ -69,10 +71,11 @@ class Board:
         self.foot, self.changes = self._html(""), self._html("")
         self.changes.visible = False
 
-    def _html(self, text, role=None, **styles):
+    def _html(self, text, **styles):
         styles = {"--font": theme.FONT, **{name.replace("_", "-"): value for name, value in styles.items()}}
         options = {"sizing_mode": "stretch_width"} if "position" not in styles else {}
-        return self._inks.host(Div(text=text, styles=styles, stylesheets=[self._style], syncable=False, margin=0, **options))
+        words = Div(text=text, styles=styles, stylesheets=[self._style], syncable=False, margin=0, **options)
+        return self._inks.host(words)
 
     def _box(self, name):
         """A plot with its save menu and its notice over it."""
@@ -84,9 +87,9 @@ class Board:
         models |= {f"{name}_menu": menu for name, menu in self._menus.items()}
         models |= {**self._sent, **{f"held_{name}": sent for name, sent in self._held_sent.items()}}
         spine, section, gallery = self._spine, self._section, self._gallery
-        models |= {"cursor": self.cursor, "pressed": self._pressed, "sentence": self._sentence, "buttons": self._buttons,
-                   "gallery_head": self._gallery_head,
-                   "share_rows": spine.row_words, "share_ticks": spine.row_ticks, "share_chosen": spine.chosen,
+        models |= {"cursor": self.cursor, "pressed": self._pressed, "sentence": self._sentence,
+                   "buttons": self._buttons, "gallery_head": self._gallery_head,
+                   "share_rows": spine.row_words, "share_legend": spine.legend, "share_ticks": spine.row_ticks, "share_chosen": spine.chosen,
                    "row_text": spine.row_text, "level_cursor": spine.level_cursor, "share_cursor": spine.share_cursor,
                    "cursor_words": spine.cursor_words,
                    "phasor": self._phasor.chain, "phasor_held": self._phasor.held, "phasor_total": self._phasor.total,
@@ -103,7 +106,7 @@ class Board:
         self._spine.level.js_on_change("inner_width", CustomJS(args=models, code=code))
 
     def show(self, overview):
-        """Replace all data by an Overview's; the cursor keeps its frequency, the first one puts it on the highest peak."""
+        """Replace all data by an Overview's; the cursor keeps its frequency, at first it takes the highest peak."""
         fresh = columns(overview)
         with self._hold():
             self._overview = overview
@@ -137,8 +140,8 @@ class Board:
                 if model.styles.get("opacity", "1") != opacity:
                     model.styles = {**model.styles, "opacity": opacity}
             for name, notice in self._notices.items():
-                words = text if name == "level" else LAST_GOOD
-                notice.text = "" if text is None else f'<p class="notice" role="alert">{escape(words)}</p>'
+                notice.text = "" if text is None else (
+                    f'<p class="notice" role="alert">{escape(text)}</p>' if name == "level" else LAST_GOOD)
                 notice.visible = text is not None
 
     def set_dark(self, dark):
@@ -202,5 +205,5 @@ def _menu_html(name):
     forms = "".join(f'<button data-act="save" data-plot="{name}" data-form="{form}">{form.upper()}</button>'
                     for form in ("png", "svg", "csv"))
     pause = '<button data-act="pause" data-word="pause">pause</button>' if name == "section" else ""
-    return (f'<div class="save">{pause}<details><summary aria-label="Save the {name} plot" title="Save this plot">⋯</summary>'
-            f"<div>{forms}</div></details></div>")
+    return (f'<div class="save">{pause}<details><summary aria-label="Save the {name} plot" title="Save this plot">⋯'
+            f"</summary><div>{forms}</div></details></div>")

@@ -28,6 +28,8 @@ const redraw = (page) => {
     drawPhasor(page)
     drawSection(page)
     drawGallery(page)
+    setWord(page, page.m.section_menu, "pause", page.playing ? "pause" : "play")
+    viewOf(page.m.buttons)?.shadow_el.querySelector("[data-act=keys]")?.setAttribute("aria-pressed", String(page.keys))
     const text = sentence(page.now, page.turns, page.f)
     if (page.m.sentence.text !== text) page.m.sentence.text = text
   })
@@ -60,6 +62,9 @@ const boot = (m) => {
     PLOTS.forEach((name) => dress(page, name))
     setPlaying(page, page.playing)
     redraw(page)
+  }
+  for (const model of [m.gallery_head, m.buttons, m.section_menu]) {   // their words are lost when they are drawn anew
+    model.connect(model.properties.styles.change, () => redraw(page))
   }
   for (const name of PLOTS) {
     const { inner_width, inner_height } = m[name].properties

@@ -3,6 +3,7 @@
 from dataclasses import dataclass
 
 import numpy as np
+from scipy.interpolate import CubicSpline
 
 from app.theme import file_stem
 
@@ -10,7 +11,7 @@ MOST_ROWS = 24          # modes with a row of their own in the share map
 MAP_COLUMNS = 480       # of the share map, uniform in log frequency
 FADE_DB = 25.0          # columns this far below the band's mean level are faded
 MOVING_SHARE = 0.01     # a mode that never makes this share of the motion is left out of the section
-MOST_POINTS = 241       # of a shape
+SHAPE_POINTS = 201      # of a drawn shape, evenly spaced
 
 
 @dataclass(frozen=True)
@@ -37,7 +38,7 @@ def columns(overview):
     others = np.setdiff1d(np.arange(n_modes), shown)
     by_row = _by_row(response.contribution, shown, others)
     moving = _moving(response.displacement, shown)
-    points = _points(len(rest.radius))
+    radius, height, radial, axial = _smooth(rest, modes.radial[moving], modes.axial[moving])
     low, high = (np.log10(edge) for edge in overview.band)
     image, veil = _map(response, _by_row(response.signed_share, shown, others), low, high)
     n_rows = by_row.shape[1]
@@ -46,9 +47,7 @@ def columns(overview):
         level={"x": np.log10(response.frequency).astype(np.float32), "frequency": _short(response.frequency),
                "level_db": _short(response.level_db), "survival": _short(response.survival)},
         rows=_two(by_row), motion=_two(response.displacement[:, moving]),
-        shapes={"radial": _short(modes.radial[np.ix_(moving, points)].ravel()),
-                "axial": _short(modes.axial[np.ix_(moving, points)].ravel())},
-        nodes={"radius": _short(rest.radius[points]), "height": _short(rest.height[points])},
+        shapes={"radial": radial, "axial": axial}, nodes={"radius": radius, "height": height},
         gallery=_gallery(overview, shown, moving),
         moving={"row": np.array([_place(shown, m) for m in moving], np.int32)},
         share={"image": [image], "dh": [n_rows], **placed}, veil={"image": [veil], "dh": [n_rows], **placed},
@@ -80,9 +79,12 @@ def _moving(displacement, shown):
     return np.union1d(shown, np.flatnonzero(share.max(axis=0) > MOVING_SHARE))
 
 
-def _points(n_nodes):
-    """Indices of at most MOST_POINTS nodes, both ends kept."""
-    return np.unique(np.linspace(0, n_nodes - 1, min(n_nodes, MOST_POINTS)).round().astype(int))
+def _smooth(rest, radial, axial):
+    """Rest radius and height (n_points,), shapes (n_moving * n_points) flat, splines through the nodes."""
+    along = np.linspace(rest.reference_radius[0], rest.reference_radius[-1], SHAPE_POINTS)
+    stack = np.vstack([rest.radius, rest.height, radial, axial])
+    drawn = CubicSpline(rest.reference_radius, stack, axis=1)(along)
+    return tuple(_short(part.ravel()) for part in np.split(drawn, [1, 2, 2 + len(radial)]))
 
 
 def _place(sorted_values, value):

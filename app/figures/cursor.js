@@ -29,9 +29,9 @@ const ACTIONS = {
   "next-peak": (page) => jump(page, page.turns.peaks),
   "previous-peak": (page) => jump(page, page.turns.peaks, -1),
   "next-dip": (page) => jump(page, page.turns.dips),
-  "keys": (page, button) => {
+  "keys": (page) => {
     page.keys = !page.keys
-    button.setAttribute("aria-pressed", String(page.keys))
+    redraw(page)
   },
   "pause": (page) => setPlaying(page, !page.playing),
   "fold": (page) => {
@@ -49,7 +49,7 @@ const turnSheet = (page, step) => {
 }
 const setPlaying = (page, playing) => {
   page.playing = playing
-  setWord(page, page.m.section_menu, "pause", playing ? "pause" : "play")
+  redraw(page)
   if (playing) animate(page)
 }
 

@@ -29,6 +29,7 @@ const roundDown = (value) => {
   return (step ?? 1) * power
 }
 const KIND_ROLE = { "pumping": "pumping", "transverse": "transverse", "in-plane": "in_plane" }
-const KIND_DASH = { "pumping": [], "transverse": [9, 2], "in-plane": [2, 2] }
-const KIND_WIDTH = { "pumping": 2.4, "transverse": 1.7, "in-plane": 1.7 }
+// Line styles of the kinds: heavy, fine, dotted.
+const KIND_DASH = { "pumping": [], "transverse": [], "in-plane": [2, 2.5] }
+const KIND_WIDTH = { "pumping": 3, "transverse": 1.6, "in-plane": 2 }
 const textWidth = (text, px = 11) => 0.56 * px * text.length

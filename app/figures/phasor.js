@@ -55,9 +55,10 @@ const drawPhasor = (page) => {
   const longest = [...links].sort((a, b) => b.size - a.size).filter((l) => l.size > 0).slice(0, 3)
   const label = (row) => row < now.n_shown ? bareHertz(now.modes[row].frequency) : row === now.n_rows - 1 ? "residual" : "others"
   const taken = []
+  const drawn = [...links, { x0: 0, y0: 0, x1: p.heard, y1: 0 }].map((l) => [px(l.x0), py(l.y0), px(l.x1), py(l.y1)])
   for (const l of longest) {
     const text = label(l.row), w = textWidth(text) + 4
-    const spot = freeSpot(px((l.x0 + l.x1) / 2), py((l.y0 + l.y1) / 2), l.phase, w, area, taken)
+    const spot = freeSpot(px((l.x0 + l.x1) / 2), py((l.y0 + l.y1) / 2), l.phase, w, area, taken, drawn)
     taken.push(spot)
     say(spot.x, spot.y, text, "ink", "normal", "center")
   }
@@ -74,17 +75,27 @@ const drawPhasor = (page) => {
   m.phasor_words.data = words
 }
 
-// A place for a label near a link's middle, off the line, clear of the labels already placed.
-const freeSpot = (x, y, angle, w, area, taken) => {
+// A place for a label near a link's middle, clear of the lines and of the labels already placed; else the least bad one.
+const freeSpot = (x, y, angle, w, area, taken, drawn) => {
   const normal = [Math.sin(angle), Math.cos(angle)], along = [Math.cos(angle), -Math.sin(angle)]
-  const fits = (s) => s.x - w / 2 >= 0 && s.x + w / 2 <= area.right + 16 && s.y >= area.top - 6 && s.y <= area.bottom + 10
-    && taken.every((t) => Math.abs(t.x - s.x) > (t.w + w) / 2 || Math.abs(t.y - s.y) > 13)
-  const reach = 8 + Math.abs(normal[0]) * w / 2
-  for (const slide of [0, 18, -18, 36, -36, 60, -60]) {
-    for (const side of [1, -1, 1.8, -1.8]) {
-      const spot = { x: x + side * reach * normal[0] + slide * along[0], y: y - side * reach * normal[1] + slide * along[1], w }
-      if (fits(spot)) return spot
+  const inside = (s) => s.x - w / 2 >= 0 && s.x + w / 2 <= area.right + 16 && s.y >= area.top - 6 && s.y <= area.bottom + 10
+  const clear = (s) => taken.every((t) => Math.abs(t.x - s.x) > (t.w + w) / 2 || Math.abs(t.y - s.y) > 13)
+  const crossed = (s) => drawn.some(([x0, y0, x1, y1]) => {
+    const steps = Math.ceil(Math.hypot(x1 - x0, y1 - y0) / 4)
+    for (let i = 0; i <= steps; i++) {
+      const t = steps ? i / steps : 0
+      if (Math.abs(x0 + t * (x1 - x0) - s.x) < w / 2 && Math.abs(y0 + t * (y1 - y0) - s.y) < 6) return true
+    }
+    return false
+  })
+  const reach = 9 + Math.abs(normal[0]) * w / 2, spots = []
+  for (const far of [1, 1.6, 2.4]) {
+    for (const slide of [0, 18, -18, 36, -36, 60, -60]) {
+      for (const side of [far, -far]) {
+        spots.push({ x: x + side * reach * normal[0] + slide * along[0], y: y - side * reach * normal[1] + slide * along[1], w })
+      }
     }
   }
-  return { x, y: y - 12 - 13 * taken.length, w }
+  const usable = spots.filter((s) => inside(s) && clear(s))
+  return usable.find((s) => !crossed(s)) ?? usable[0] ?? { x, y: y - 12 - 13 * taken.length, w }
 }

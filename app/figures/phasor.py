@@ -20,7 +20,7 @@ class Phasor:
         self.plot.add_glyph(self.total, inks(Segment(**ends, line_width=2.4), line_color="accent"))
         self.plot.add_glyph(self.total, inks(Scatter(x="x1", y="y1", marker="triangle", size=10, angle="angle",
                                                      line_color=None), fill_color="accent"))
-        self.plot.add_glyph(self.chain, Segment(**ends, line_width="width", line_dash={"field": "dash"}, line_cap="round",
+        self.plot.add_glyph(self.chain, Segment(**ends, line_width="width", line_dash={"field": "dash"},
                                                 line_color=inks.by_column()))
         text(self.plot, inks, self.words, color=None, text_align={"field": "align"}, text_baseline="middle",
              text_font_style={"field": "style"})

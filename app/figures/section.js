@@ -1,5 +1,6 @@
 // Section to scale at rest, moving; millimetres, both sides mirrored.
-const PERIOD_MS = 1600, FRAME_MS = 30, ROOM = 0.11   // of one drawn period, between frames; drawn motion over frame radius
+const PERIOD_MS = 1600, FRAME_MS = 30      // of one drawn period; between frames
+const ROOM = 0.14, STEEPEST = 0.7          // drawn motion over frame radius; drawn strain along the film, below folding
 
 const mirror = (radius, height, x, y) => {
   const n = radius.length
@@ -15,6 +16,17 @@ const outline = (d) => {
   return { x, y }
 }
 
+// A readable factor that makes the motion visible and lets no part of the film fold over its neighbour.
+const drawnFactor = (field, d) => {
+  if (!(field.largest > 0)) return 1
+  let strain = 0
+  for (let p = 1; p < d.radius.length; p++) {
+    const step = Math.hypot(field.r_re[p] - field.r_re[p - 1], field.r_im[p] - field.r_im[p - 1])
+    strain = Math.max(strain, step / (d.radius[p] - d.radius[p - 1]))
+  }
+  return roundDown(Math.min(ROOM * d.frame_radius / field.largest, STEEPEST / Math.max(strain, 1e-12)))
+}
+
 // Everything that stands still: ranges, frame, rear, scale bar, words.
 const drawSection = (page) => {
   const { m, now, held, f } = page, plot = m.section_plot
@@ -23,7 +35,7 @@ const drawSection = (page) => {
   const b = 1e3 * now.frame_radius, a = 1e3 * now.centre_radius
   const chosen = sameMode(now, page.chosen)
   const field = motionAt(now, f, chosen ? chosen.shape : null)
-  const factor = field.largest > 0 ? roundDown(ROOM * b / (1e3 * field.largest)) : 1
+  const factor = drawnFactor(field, now)
   const heights = Array.from(now.height, (v) => 1e3 * v)
   const top = Math.max(...heights, 0) + ROOM * b, half = 1.24 * b
   const area = { top: 42, bottom: H - 24 }
@@ -31,7 +43,7 @@ const drawSection = (page) => {
   const ux = (sx) => (sx - W / 2) / scale, uy = (sy) => top - (sy - area.top) / scale
   plot.x_range.setv({ start: ux(0), end: ux(W) })
   plot.y_range.setv({ start: uy(H), end: uy(0) })
-  const floor = Math.max(uy(area.bottom), Math.min(...heights, 0) - 1.1 * b)
+  const floor = Math.max(uy(area.bottom), Math.min(...heights, 0) - 0.8 * b)
 
   m.section_frame.data = { xs: [[-b, -b, -half, -half], [b, b, half, half]],
                            ys: [[-0.025 * b, 0.025 * b, 0.025 * b, -0.025 * b], [-0.025 * b, 0.025 * b, 0.025 * b, -0.025 * b]] }

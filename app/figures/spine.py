@@ -9,7 +9,8 @@ from app import theme
 from app.figures.canvas import bare_plot, gridlines, source, span, text
 
 LEFT, RIGHT, TOP = 62, 14, 26        # px of the margins, the same for both plots
-LEVEL_BOTTOM, SHARE_BOTTOM = 6, 34
+LEVEL_BOTTOM, SHARE_BOTTOM = 6, 38
+MENU, SCALE = 26, 84                 # px: kept free for the save menu, length of the colour scale
 MOST_DB, LEAST_DB = 80, 40           # height of the level axis
 
 
@@ -37,7 +38,7 @@ class Spine:
         self.level_words = source(x=[], y=[], text=[])
         self.estimate_words = source(x=[], y=[], text=[], align=[], shift=[])
         self.held_words = source(x=[], y=[], text=[])
-        self.cursor_words = source("cursor_words", x=[], y=[], text=[], align=[], shift=[])
+        self.cursor_words = source("cursor_words", x=[], y=[], text=[], shift=[])
         gridlines(plot, inks, self.level_grid)
         held = inks(Line(x="x", y="level_db", line_width=1.5), line_color="held")
         line = inks(Line(x="x", y="level_db", line_width=1.8, line_join="round"), line_color="ink")
@@ -45,10 +46,10 @@ class Spine:
         plot.add_glyph(self.level_source, line)
         text(plot, inks, self.level_labels, text_align="right", text_baseline="middle", x_offset=-8)
         text(plot, inks, self.level_words, size=12, color="ink", text_align="left", x_offset=-LEFT + 8, y_offset=-10)
-        text(plot, inks, self.held_words, text_align="right", y_offset=-10)
+        text(plot, inks, self.held_words, text_align="left", x_offset=6, y_offset=15)
         text(plot, inks, self.estimate_words, text_align={"field": "align"}, x_offset={"field": "shift"}, y_offset=-5)
-        text(plot, inks, self.cursor_words, size=12, color="accent", text_align={"field": "align"},
-             x_offset={"field": "shift"}, y_offset=15, text_font_style="bold")
+        text(plot, inks, self.cursor_words, size=12, color="accent", text_align="center",
+             x_offset={"field": "shift"}, y_offset=-10, text_font_style="bold")
         self.level_cursor = self._cursor(plot, inks)
         return plot
 
@@ -61,7 +62,9 @@ class Spine:
         self.share_labels = source(x=[], y=[], text=[])
         self.share_words = source(x=[], y=[], text=[])
         self.axis_words = source(x=[], y=[], text=[])
-        self.legend_words = source(x=[], y=[], text=[], shift=[], colour=[])
+        self.legend = source("share_legend", image=[np.linspace(-1, 1, 65, dtype=np.float32)[None, :]], x=[0], y=[0],
+                             dw=[0], dh=[0])
+        self.legend_words = source(x=[], y=[], text=[], shift=[])
         image = {"x": "x", "y": "y", "dw": "dw", "dh": "dh"}
         plot.add_glyph(self.share_source, Image(image="image", color_mapper=self.colours, **image), level="image")
         plot.add_glyph(self.veil_source, Image(image="image", color_mapper=self.veil_colours, **image), level="image")
@@ -69,14 +72,13 @@ class Spine:
         plot.add_glyph(self.row_ticks, ticks)
         self.row_text = text(plot, inks, self.row_words, color=None, text_align="right", text_baseline="middle",
                              x_offset=-8, text_font_style={"field": "style"}).glyph
-        text(plot, inks, self.share_labels, text_align="center", text_baseline="top", y_offset=5)
-        text(plot, inks, self.axis_words, text_align="right", text_baseline="top", y_offset=19)
+        text(plot, inks, self.share_labels, text_align="center", text_baseline="alphabetic", y_offset=16)
+        text(plot, inks, self.axis_words, text_align="right", text_baseline="alphabetic", y_offset=29)
         text(plot, inks, self.share_words, size=12, color="ink", text_align="left", x_offset=-LEFT + 8, y_offset=-10)
-        legend = text(plot, inks, self.legend_words, color=None, text_align="right", x_offset={"field": "shift"},
-                      y_offset=-10)
-        legend.glyph.text_color = {"field": "colour"}
-        self.chosen = inks(BoxAnnotation(bottom=0, top=1, fill_color=None, line_width=1.5, visible=False, syncable=False,
-                                         editable=False, name="share_chosen"), line_color="accent")
+        text(plot, inks, self.legend_words, text_align="right", x_offset={"field": "shift"}, y_offset=-10)
+        plot.add_glyph(self.legend, Image(image="image", color_mapper=self.colours, **image), level="annotation")
+        self.chosen = inks(BoxAnnotation(bottom=0, top=1, fill_color=None, line_width=1.5, visible=False,
+                                         syncable=False, editable=False, name="share_chosen"), line_color="accent")
         plot.add_layout(self.chosen)
         self.share_cursor = self._cursor(plot, inks)
         return plot
@@ -101,14 +103,13 @@ class Spine:
         empty = {name: [] for name in ("x", "frequency", "level_db", "survival")}
         self.held_source.data = empty if columns is None else columns.level
         held = columns is not None
-        self.held_words.data = {"x": [self.x_range.end] * held, "y": [self.level.y_range.end] * held,
+        self.held_words.data = {"x": [self.x_range.start] * held, "y": [self.level.y_range.end] * held,
                                 "text": ["grey: held design"] * held}
 
     def change_colours(self, palette):
         """What the inks do not reach: the colour scales."""
         self.colours.palette = theme.diverging(palette)
         self.veil_colours.palette = _veil(palette)
-        self._legend()
 
     def _frequency_axis(self, band, n_rows):
         low, high = (math.log10(edge) for edge in band)
@@ -121,17 +122,9 @@ class Spine:
         self.share_labels.data = {"x": np.log10(labelled), "y": [0] * len(labelled),
                                   "text": [theme.tick(f) for f in labelled]}
         self.axis_words.data = {"x": [high], "y": [0], "text": ["Frequency, Hz"]}
+        self.legend_words.data = {"x": [high] * 2, "y": [n_rows] * 2, "text": ["adds", "cancels"],
+                                  "shift": [-MENU, -MENU - 34 - SCALE]}
         self.share_words.data = {"x": [low], "y": [n_rows], "text": ["Share of each mode, by its frequency in air, Hz"]}
-        self._legend()
-
-    def _legend(self):
-        """The colour scale as small blocks between its two words, above the map's right end."""
-        scale = self.colours.palette[::16]
-        words = ["adds", *["■"] * len(scale), "cancels"]
-        shift = [0.0, *(-34.0 - 9 * i for i in range(len(scale))), -34.0 - 9 * len(scale) - 4]
-        ends = [self.colours.palette[-1], *scale[::-1], self.colours.palette[0]]
-        self.legend_words.data = {"x": [self.x_range.end] * len(words), "y": [self.share.y_range.end] * len(words),
-                                  "text": words, "shift": shift, "colour": ends}
 
     def _level_axis(self, overview, level):
         inside = (level["frequency"] >= overview.band[0]) & (level["frequency"] <= overview.band[1])
@@ -150,7 +143,7 @@ class Spine:
                                   "text": [theme.digits(v) for v in named]}
         self.level_words.data = {"x": [start], "y": [high], "text": [level_label(overview.design.listener)]}
         if self.held_words.data["x"]:
-            self.held_words.data = {"x": [end], "y": [high], "text": ["grey: held design"]}
+            self.held_words.data = {"x": [start], "y": [high], "text": ["grey: held design"]}
 
     def _mark_estimate(self, overview):
         above, (low, high) = overview.response.estimate_above, overview.band

@@ -3,7 +3,7 @@
 from dataclasses import dataclass
 from html import escape
 
-from app.theme import decibel, hertz, percent, quantity
+from app.theme import band_words, decibel, hertz, percent, quantity
 
 NEAR_BREAKDOWN, LOUD_DB = 0.8, 85.0
 HIGH_VOLTAGE = ("High voltage can kill. Qualified people only, by the rules of the place; discharge and short-circuit "
@@ -21,7 +21,7 @@ class Item:
 
 def strip_items(overview):
     """The six figures of the strip."""
-    figures, (low, high) = overview.key_figures, overview.band
+    figures = overview.key_figures
     ratio, slack = figures.breakdown_ratio, figures.least_stress <= 0
     breakdown = ("breaks down at the drive's peak" if ratio >= 1 else "of breakdown: close" if ratio > NEAR_BREAKDOWN
                  else "of breakdown")
@@ -29,10 +29,11 @@ def strip_items(overview):
     first = figures.first_break_up_frequency
     return (Item(percent(ratio), breakdown, ratio > NEAR_BREAKDOWN),
             Item("slack" if slack else "taut", f"least stress {stress}", slack),
-            Item(quantity(figures.largest_stroke, "m", 2), f"largest stroke, at {hertz(figures.largest_stroke_frequency)}"),
+            Item(quantity(figures.largest_stroke, "m", 2),
+                 f"largest stroke, at {hertz(figures.largest_stroke_frequency)}"),
             Item(hertz(figures.pumping_frequency), "pumping"),
             Item("none" if first is None else hertz(first), "first break-up, in air"),
-            Item(decibel(figures.mean_level_db), f"mean, {hertz(low)} – {hertz(high)}"))
+            Item(decibel(figures.mean_level_db), f"mean, {band_words(overview.band)}"))
 
 
 def strip_html(overview, held=None):
@@ -68,26 +69,27 @@ def foot_html(overview):
 def changes_html(held, overview):
     """Table of the key figures: held, now, difference."""
     old, new = held.key_figures, overview.key_figures
-    rows = [_row("Pumping frequency", old.pumping_frequency, new.pumping_frequency, hertz),
-            _row("First break-up in air", old.first_break_up_frequency, new.first_break_up_frequency, hertz),
-            _row("Mean level in the band", old.mean_level_db, new.mean_level_db, _tenth),
-            _row("Ripple in the band", old.ripple_db, new.ripple_db, _tenth),
-            _row("Peak field over breakdown", old.breakdown_ratio, new.breakdown_ratio, percent),
-            _row("Height of the centre", old.centre_height, new.centre_height, lambda v: quantity(v, "m"))]
+    rows = [_row("Pumping frequency", old.pumping_frequency, new.pumping_frequency, "Hz"),
+            _row("First break-up in air", old.first_break_up_frequency, new.first_break_up_frequency, "Hz"),
+            _row("Mean level in the band", old.mean_level_db, new.mean_level_db, "dB"),
+            _row("Ripple in the band", old.ripple_db, new.ripple_db, "dB"),
+            _row("Peak field over breakdown", old.breakdown_ratio, new.breakdown_ratio, "%", 100),
+            _row("Height of the centre", old.centre_height, new.centre_height, "mm", 1000, 2)]
     head = "".join(f'<th scope="col">{word}</th>' for word in ("", "held", "now", "difference"))
     return (f'<table class="changes"><caption>What changed since <q>{escape(held.design.name)}</q> was held</caption>'
             f"<thead><tr>{head}</tr></thead><tbody>{''.join(rows)}</tbody></table>")
 
 
-def _row(label, old, new, words):
-    cells = [words(v) if v is not None else "none" for v in (old, new)]
-    cells.append("–" if old is None or new is None else "0" if cells[0] == cells[1] else _signed(new - old, words))
-    return f'<tr><th scope="row">{label}</th>' + "".join(f"<td>{escape(cell)}</td>" for cell in cells) + "</tr>"
+def _row(label, old, new, unit, factor=1, places=1):
+    """One figure in three cells, the difference between the printed values."""
+    shown = [None if value is None else round(factor * value, places) for value in (old, new)]
+    cells = ["none" if value is None else _fixed(value, places) + f" {unit}" for value in shown]
+    changed_in = "points" if unit == "%" else unit
+    change = "–" if None in shown else f"{_fixed(shown[1] - shown[0], places, '+')} {changed_in}"
+    return f'<tr><th scope="row">{label}</th>' + "".join(f"<td>{cell}</td>" for cell in (*cells, change)) + "</tr>"
 
 
-def _signed(difference, words):
-    return ("+" if difference > 0 else "−") + words(abs(difference))
-
-
-def _tenth(value):
-    return f"{value:.1f} dB".replace("-", "−")
+def _fixed(value, places, sign=""):
+    """A number with so many places; a difference that rounds to nothing has no sign."""
+    text = f"{value:{sign}.{places}f}"
+    return (text.lstrip("+-") if float(text) == 0 else text).replace("-", "−")
