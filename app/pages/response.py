@@ -38,11 +38,12 @@ class ResponsePage:
     def plots(self):
         """The figures in their places: the frequency axis is the spine, what happens at the cursor beside it."""
         board = self.board
-        spine = _part("spine", strip=board.strip, sentence=board.sentence, level=board.level, share=board.share)
+        head = _part("head", strip=board.strip, sentence=board.sentence)
+        spine = _part("spine", level=board.level, share=board.share)
         side = _part("side", section=board.section, changes=board.changes, phasor=board.phasor)
-        whole = Column(spine, side, _named(board.gallery, "gallery"), _named(board.foot, "foot"),
-                       stylesheets=[PLOTS_CSS], sizing_mode="stretch_both")
-        return pn.pane.Bokeh(whole, css_classes=["plots", "region-plots"], margin=0, sizing_mode="stretch_both")
+        whole = Column(head, spine, side, _named(board.gallery, "gallery"), _named(board.foot, "foot"),
+                       css_classes=["region-plots"], stylesheets=[PLOTS_CSS], sizing_mode="stretch_both")
+        return pn.pane.Bokeh(whole, css_classes=["region-plots"], margin=0, sizing_mode="stretch_both")
 
     def show(self, *events):
         """Show the last good overview, and say in words why a newer design is not shown."""
