@@ -19,7 +19,7 @@ from scipy.special import j0, j1
 LADDER = (4.0, 16.0, 64.0, 128.0)     # largest k b of the kept tables; beyond, multiples of 64
 ROUNDING = 16                         # tables are kept for multiples of this many polynomials
 CORE = 64                             # polynomials, up to k b = 64, that may need every term; fewer are a sub-block
-OUTER_TERMS = 20                      # terms that the polynomials beyond the core need
+OUTER_TERMS = 16                      # terms that the polynomials beyond the core need
 TRIM = 1e-12                          # of sqrt(B_ii B_jj): coefficients below it are left out
 LARGEST_BATCH = 8192                  # points evaluated at once
 

@@ -8,7 +8,7 @@ from scipy.integrate import quad
 from scipy.special import iv, ive, jn_zeros, jv, struve
 from threadpoolctl import threadpool_limits
 
-from engine import radiation
+from engine import radiation, radiation_tables
 from tests.references import acoustics as ref
 
 
@@ -189,8 +189,8 @@ def test_reactance_against_the_autocorrelation(order):
     """Rayleigh's e^{-ikR}/R gives B(x) = int_0^2 C(t) cos(xt) dt and x A(x) = int_0^2 C(t) sin(xt) dt with one C.
 
     C, the autocorrelation of the velocity, ends at the diameter: it is a sine series of x A at the multiples of pi/2,
-    and B follows from A alone. The jump C(0) = int J^2/s ds = sum c_j^2/(2 (n+2j+1)) is taken out in closed form; what is
-    left of the series falls like the cube, 40 terms give 3e-5.
+    and B follows from A alone. The jump C(0) = int J^2/s ds = sum c_j^2/(2 (n+2j+1)) is taken out in closed form; what
+    is left of the series falls like the cube, 40 terms give 3e-5.
     """
     c = coefficients(lambda rho: rho**order * (1.0 - rho**2) ** 3, 16, order)
     jump = np.sum(c[:, 0] ** 2 / (2.0 * (order + 2 * np.arange(16) + 1)))
@@ -204,6 +204,23 @@ def test_reactance_against_the_autocorrelation(order):
     expected = np.cos(np.outer(at, t)) @ (weight * C)
     B = radiation.impedance(c, at, 1.0, 1.0, order)[:, 0, 0].imag / radiation.azimuth(order) / at
     np.testing.assert_allclose(B, expected, atol=1e-4 * np.abs(expected).max(), rtol=0.0)
+
+
+@pytest.mark.parametrize(("i", "j"), [(0, 0), (3, 90), (10, 12), (70, 70), (100, 103)])
+@pytest.mark.parametrize("x", [10.0, 60.0])
+def test_reactance_of_high_polynomials(i, j, x):
+    """int F(sqrt(x^2+w^2)) - F(w) dw, F = J_mu J_nu/s^2, with scipy's Bessel functions on panels of pi up to 8000."""
+    u, weight = np.polynomial.legendre.leggauss(12)
+    w = (np.pi * (np.arange(2546)[:, None] + 0.5 + 0.5 * u)).ravel()
+
+    def F(s):
+        return jv(2 * i + 1, s) * jv(2 * j + 1, s) / s**2
+
+    change = np.tile(0.5 * np.pi * weight, 2546) @ (F(np.hypot(x, w)) - F(w)) * (-1) ** (i + j)
+    c = np.eye(128)[:, [i, j]]
+    found = radiation.impedance(c, np.array([x]), 1.0, 1.0)[0].imag / (2.0 * np.pi * x)
+    static = radiation.low_frequency_mass(c, 1.0, 1.0) / (2.0 * np.pi)
+    assert found[0, 1] - static[0, 1] == pytest.approx(change, abs=2e-10 * np.sqrt(static[0, 0] * static[1, 1]) + 5e-11)
 
 
 def film_like(n_shapes, J, order=0, seed=1):
@@ -287,6 +304,17 @@ def test_upper_triangles():
     for rows, dense in zip((resistance, reactance), table.dense(), strict=True):
         np.testing.assert_allclose(rows, np.einsum("am,kab,bn->kmn", c, dense[:, :90, :90], c)[:, i, j],
                                    atol=1e-12 * np.abs(rows).max())
+
+
+def test_what_the_tables_leave_out():
+    """Trimmed tables, few terms for high polynomials, against every term of all of them."""
+    table = radiation.tables(60.0, 128)
+    A, B = radiation_tables._coefficients(table.x_max, table.n_terms, 128, 0)
+    size = np.sqrt(np.diag(radiation.static_mass_matrix(128)))
+    for dense, full in zip(table.dense(), (A * table.x_max, B), strict=True):
+        dense = dense * (table.x_max if full is not B else 1.0)
+        assert np.max(np.abs(dense - full) / (size[:, None] * size)) < 2e-12
+    assert sum(stack.size for _, _, stack in table.blocks) < 0.3 * 2 * B.size
 
 
 def test_tables_are_built_once_by_one_thread():
