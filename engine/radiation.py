@@ -11,6 +11,7 @@ Principles of Optics, appendix VII; expansion of baffled sources in them: Aarts 
 
 import numpy as np
 
+from engine.errors import InvalidDesign
 from engine.radiation_tables import (
     ROUNDING,
     Tables,
@@ -210,7 +211,7 @@ def listener_transfer(radius, height, flow, wavenumber, distance, angle, density
     -------
     (n_freq, m) complex, Pa/m.
 
-    Raises ValueError if the listener is on the source's surface.
+    Raises InvalidDesign if the listener is on the source's surface.
     """
     k = np.asarray(wavenumber, dtype=float)
     R, share, starts = _ring_distances(radius, height, distance, angle, k.max(initial=0.0))
@@ -240,8 +241,8 @@ def _ring_distances(radius, height, distance, angle, k_max):
     square, swing = across**2 + r**2 + along**2, 2.0 * across * r
     size = max(r.max(), np.abs(z).max())
     if np.min(square - swing) <= (NEAREST * size) ** 2:
-        raise ValueError(f"the listener, {distance:g} m from the centre, lies on the moving surface: "
-                         "move it further away")
+        raise InvalidDesign(f"listener.distance is {distance:g} m: the listener lies on the moving surface, which ends "
+                            f"{np.hypot(r, z).max():g} m from the centre; move it further away or nearer the axis")
     if np.all(swing <= 1e-15 * square):
         return np.sqrt(square), np.ones_like(r), np.arange(r.size)
     decay = np.arccosh(np.maximum(square / np.maximum(swing, 1e-300 * square), 1.0 + 1e-12))

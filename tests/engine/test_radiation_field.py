@@ -7,6 +7,7 @@ from scipy.special import jn_zeros, jv
 from threadpoolctl import threadpool_limits
 
 from engine import radiation
+from engine.errors import InvalidDesign
 from tests.references import acoustics as ref
 
 DENSITY, SPEED = 1.2, 343.0
@@ -170,5 +171,5 @@ def test_listener_transfer_limits():
     np.testing.assert_array_equal(transfer(*source, np.zeros(2), 1.0, 0.3), np.zeros((2, 3)))
     k = np.linspace(0.0, 90.0, 7)
     np.testing.assert_allclose(transfer(*source, k, 0.3, 0.3)[4:5], transfer(*source, k[4:5], 0.3, 0.3), rtol=1e-11)
-    with pytest.raises(ValueError, match=r"listener, 0\.01 m from the centre, lies on the moving surface.*move"):
+    with pytest.raises(InvalidDesign, match=r"listener\.distance is 0\.01 m: .* on the moving surface.*move"):
         transfer(np.array([0.01]), np.array([0.0]), np.ones((1, 1)), k, 0.01, np.pi / 2)
