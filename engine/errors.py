@@ -33,7 +33,7 @@ class NoRestState(RuntimeError):
         Bias in V at which the stable branch ends, for pull-in.
     """
 
-    def __init__(self, message, reason, voltage=None):
+    def __init__(self, message, reason="", voltage=None):
         super().__init__(message)
         self.reason = reason
         self.voltage = voltage

@@ -10,10 +10,12 @@ import numpy as np
 from engine import air, mesh, radiation, rear, source, statics
 from engine import film as flm
 
-DYNAMIC_ORDER = 8
-NODES_PER_WAVELENGTH = 5.0
+DYNAMIC_ORDER = 10
+NODES_PER_WAVELENGTH = 3.3  # of the shortest wave of the basis; DEVELOPERS.md has the convergence
 MODES_TO = 1.5              # the basis holds the modes up to this multiple of the highest frequency asked
-MOST_ELEMENTS = 60
+POLYNOMIALS_TO = 1.3        # the air's polynomials are counted at this multiple of it
+MOST_ELEMENTS = 26
+MOST_POLYNOMIALS = 192
 
 
 @dataclass(frozen=True)
@@ -72,7 +74,8 @@ def build(design, frequency_max, refinement=1.0):
     n_elements = min(wanted, most)
     fine, q = statics.on_mesh(rest, mesh.build(mesh.equidistributed(density, r0, n_elements), DYNAMIC_ORDER))
 
-    n_polynomials = radiation.n_polynomials(refinement*np.max(k)/MODES_TO, b)
+    n_polynomials = min(radiation.n_polynomials(refinement*POLYNOMIALS_TO*np.max(k)/MODES_TO, b),
+                        int(refinement*MOST_POLYNOMIALS))
     emitter = source.sample(fine, q, int(radiation.points_per_segment(_widest(fine, q), n_polynomials)))
     functionals = radiation.projection_matrix(emitter.radius/b, n_polynomials)/(2*np.pi*b**2)
     _, s = flm.swept_volume(fine, q)

@@ -6,7 +6,7 @@ stretches are lam1^2 = P A, lam2^2 = P B, lam3^2 = 1/(P^2 A B). Everything is pe
 
 import numpy as np
 
-LAWS = ("neo-hookean", "mooney-rivlin", "gent", "yeoh", "ogden")
+from engine.laws import LAWS
 
 
 def first_invariant(A, B, P):
@@ -21,9 +21,9 @@ def second_invariant(A, B, P):
             2/(P*A**3), P**2 + 0*A, 2/(P*B**3))
 
 
-def _chain(I, f, f1, f2):
-    """Derivatives of f(I(A, B)) from f, f', f'' and those of I."""
-    _, IA, IB, IAA, IAB, IBB = I
+def _chain(invariant, f, f1, f2):
+    """Derivatives of f(I(A, B)) from f, f', f'' and those of the invariant I."""
+    _, IA, IB, IAA, IAB, IBB = invariant
     return f, f1*IA, f1*IB, f2*IA**2 + f1*IAA, f2*IA*IB + f1*IAB, f2*IB**2 + f1*IBB
 
 

@@ -48,9 +48,21 @@ def lagrange(order, points):
 
 
 @lru_cache
+def gauss(n_points):
+    """Gauss-Legendre rule on [-1, 1]: (x, weights)."""
+    return legendre.leggauss(n_points)
+
+
+@lru_cache
+def to_legendre(order):
+    """Matrix (order+1, order+1) from an element's nodal values to its Legendre coefficients."""
+    return np.linalg.inv(legendre.legvander(gauss_lobatto(order)[0], order))
+
+
+@lru_cache
 def gauss_on_element(order, n_points):
     """Gauss rule on [-1, 1] with the element's polynomials and derivatives there: (x, weights, E, E')."""
-    x, w = legendre.leggauss(n_points)
+    x, w = gauss(n_points)
     E = lagrange(order, x)
     return x, w, E, E @ reference_derivative(order)
 

@@ -72,13 +72,12 @@ def solve(system, least_modes=1):
     K = system.stiffness + system.rear.stiffness*np.outer(system.volume, system.volume)
     M = np.diag(system.mass) + linear.air_mass(system)
     top = (2*np.pi*linear.MODES_TO*system.frequency_max)**2
-    squares, shapes = scipy.linalg.eigh(K, M, subset_by_value=(-np.inf, top), check_finite=False)
-    if len(squares) < least_modes:
-        squares, shapes = scipy.linalg.eigh(K, M, subset_by_index=(0, least_modes - 1), check_finite=False)
+    squares, shapes = scipy.linalg.eigh(K, M, check_finite=False)       # all of them: faster than a choice
+    n_modes = min(max(np.searchsorted(squares, top), least_modes), MOST_MODES)
+    squares, shapes = squares[:n_modes], shapes[:, :n_modes].T
     if squares[0] <= 0:
         raise NoRestState("The rest shape is not stable against small motions: raise the prestretch or lower the bias.",
                           "slack")
-    squares, shapes = squares[:MOST_MODES], shapes[:, :MOST_MODES].T
     static = _static_corrections(K, M, np.stack([system.load, system.volume]), shapes)
     modes, scale = _describe(system, squares, shapes)
     every = np.concatenate([shapes*scale[:, None], static])
@@ -133,7 +132,7 @@ def _vacuum_frequencies(system, n):
     K = system.stiffness*root[:, None]*root
     width = 2*system.film.mesh.order + 2
     band = np.array([np.append(np.zeros(i), np.diagonal(K, i)) for i in range(width - 1, -1, -1)])
-    squares = scipy.linalg.eig_banded(band, eigvals_only=True, select="i", select_range=(0, n - 1), check_finite=False)
+    squares = scipy.linalg.eig_banded(band, eigvals_only=True, check_finite=False)[:n]
     return np.sqrt(np.maximum(squares, 0))/(2*np.pi)
 
 

@@ -33,7 +33,7 @@ def sample(film, q, n_gauss, n_centre=None):
     r, z = m.local(radial) @ E.T, m.local(axial) @ E.T
     dr, dz = (m.local(v) @ dE.T for v in (radial, axial))      # the element's length cancels against dr0
     a = m.edges[0]
-    x, wc = np.polynomial.legendre.leggauss(n_centre or n_gauss)
+    x, wc = msh.gauss(n_centre or n_gauss)
     rc = a*(1 + x)/2
     return Source(film, np.concatenate([rc, r.ravel()]), np.concatenate([np.full(len(rc), q[0]), z.ravel()]),
                   np.pi*rc*a*wc, (E, dE), 2*np.pi*r*dr*w, -2*np.pi*r*dz*w)

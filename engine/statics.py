@@ -4,15 +4,17 @@ from dataclasses import dataclass, replace
 from functools import lru_cache
 
 import numpy as np
-from numpy.polynomial import legendre
 
 from engine import film as flm
 from engine import mesh as msh
 from engine.errors import NoRestState, NotConverged
 
 STATIC_ORDER = 10
-MOST_STATIC_ELEMENTS = 64
+MOST_STATIC_ELEMENTS = 16
+MOST_STEPS = 150         # of voltage, before the branch is given up
+SETTLED = 3e-6           # Newton step, relative to the frame radius, after which the next would be below 1e-10
 RESOLVED = 1e-8          # last Legendre coefficient of a resolved shape, relative to the frame radius
+COARSE = 1e-5            # what is enough to place a pull-in, and above which a finding says that the shape is not resolved
 
 
 @dataclass(frozen=True)
@@ -96,7 +98,7 @@ def _newton(film, q, voltage, most=12):
         size = np.max(np.abs(step))
         if not size < film.mesh.edges[-1]:
             return None
-        if size < 1e-9*film.mesh.edges[-1]:
+        if size < SETTLED*film.mesh.edges[-1]:
             return q, K
     return None
 
@@ -168,21 +170,23 @@ def follow(film, q, K, start, stop):
     """
     s, goal = start**2/2, stop**2/2
     step = goal - s
-    while s < goal:
+    for _ in range(MOST_STEPS):
+        if s >= goal:
+            return q, K, None
         step = min(step, goal - s)
         predicted = step*np.linalg.solve(K, flm.electrode_load(film, q, 1.0))
         moved = np.max(np.abs(predicted))
         near = 0.5*moved + 1e-3*film.mesh.edges[-1]
         voltage = np.sqrt(2*(s + step)) if s + step < goal else stop
         with np.errstate(all="ignore"):
-            found = _newton(film, q + predicted, voltage, most=7) if moved < film.mesh.edges[-1] else None
+            found = _newton(film, q + predicted, voltage, most=6) if moved < film.mesh.edges[-1] else None
         if found is not None and np.max(np.abs(found[0] - q - predicted)) <= near and _is_stable(found[1]):
-            (q, K), s, step = found, s + step, 2*step
+            (q, K), s, step = found, s + step, 1.5*step
         else:
-            step /= 2
+            step /= 3
             if step < 2e-4*(s + step):         # 1e-4 in voltage
                 return q, K, float(np.sqrt(2*s))
-    return q, K, None
+    raise NotConverged(f"The film's shape could not be followed beyond {np.sqrt(2*s)/1e3:.4g} kV: lower the bias.")
 
 
 def _static_edges(a, b, n_elements):
@@ -193,11 +197,9 @@ def _static_edges(a, b, n_elements):
 
 def _unresolved(film, q):
     """Largest of an element's last two Legendre coefficients of the shape, relative to the frame radius."""
-    x = msh.gauss_lobatto(film.mesh.order)[0]
-    radial, axial = flm.expand(film, q, at_rest=True)
-    values = film.mesh.local(np.stack([radial, axial]))
-    coefficients = np.linalg.solve(legendre.legvander(x, film.mesh.order), values[..., None])[..., 0]
-    return np.max(np.abs(coefficients[..., -2:]))/film.mesh.edges[-1]
+    values = film.mesh.local(np.stack(flm.expand(film, q, at_rest=True)))
+    last = values @ msh.to_legendre(film.mesh.order)[-2:].T
+    return np.max(np.abs(last))/film.mesh.edges[-1]
 
 
 def solve(design):
@@ -222,7 +224,9 @@ def _biased(a, b, film_fields, electrodes, centre, bias):
                                msh.build(_static_edges(a, b, n_elements), STATIC_ORDER))
         q, K = unbiased(film)
         q, K, end = follow(film, q, K, 0.0, bias)
-        if _unresolved(film, q) > RESOLVED and 2*n_elements <= MOST_STATIC_ELEMENTS:
+        taut = extremes(film, q, bias)[0][0] > 0       # a slack film's wrinkles have no resolved shape here
+        enough = np.inf if not taut else RESOLVED if end is None else COARSE
+        if _unresolved(film, q) > enough and 2*n_elements <= MOST_STATIC_ELEMENTS:
             n_elements *= 2
         elif end is None:
             return film, q, K
@@ -278,6 +282,9 @@ def judge(design, rest, film, q):
             "pull-in", f"The film pulls in at {rest.pull_in_voltage/1e3:.4g} kV, below the peak of the drive at "
             f"{rest.peak_voltage/1e3:.4g} kV (held there without inertia).", "peak of the drive",
             value=rest.peak_voltage, limit=rest.pull_in_voltage))
+    if _unresolved(rest.film, rest.state) > COARSE:
+        findings.append(Finding("resolution", "The rest shape turns too sharply somewhere to be resolved: take its "
+                                "numbers as estimates."))
     findings += [f for f in _findings(design, "peak of the drive", rest.peak_voltage, peak) if f.name not in named]
     return Equilibrium(
         reference_radius=film.mesh.radius, radius=frozen(radial), height=frozen(axial),
