@@ -20,6 +20,7 @@ from app.figures.strip import changes_html, foot_html, strip_html
 HERE = Path(__file__).parent
 SCRIPTS = ("format", "reading", "words", "spine", "phasor", "section", "gallery", "save", "cursor", "boot")
 SENT = ("level", "rows", "motion", "shapes", "nodes", "gallery", "moving", "still")
+WORDS = ("strip", "foot", "changes")
 PLOTS = ("level", "share", "phasor", "section", "gallery")
 LAST_GOOD = '<p class="notice aside">last good state</p>'
 
@@ -28,7 +29,8 @@ class Board:
     """Figures of one session; every attribute without underscore that is a Bokeh model is ready to place.
 
     strip, sentence, level, share, phasor, section, gallery, foot, changes: the parts. cursor: source with the column
-    ``frequency`` (Hz, one row); after the first ``show`` it belongs to the browser.
+    ``frequency`` (Hz, one row); after the first ``show`` it belongs to the browser. words: source with the HTML of
+    strip, foot and changes.
     """
 
     def __init__(self, dark=False):
@@ -50,6 +52,7 @@ class Board:
         self._held_sent = {"level": spine.held_source, "gallery": source("held_gallery", **modes.data),
                            **{name: source(f"held_{name}", **_EMPTY[name]) for name in _EMPTY}}
         self.cursor = source("cursor", frequency=[])
+        self.words = source("words", **{name: [] for name in WORDS})
         self._pressed = source("pressed", key=[], count=[])
         self._pressed.syncable = True
         self._listeners = {}
@@ -59,8 +62,8 @@ class Board:
         self._start_browser_code()
 
     def _place(self):
-        self.strip = self._html("")
-        self._sentence = self._html("")
+        self.strip, self.foot, self.changes = (self._html(f'<div data-word="{name}"></div>') for name in WORDS)
+        self._sentence = self._html('<span data-word="sentence" role="status"></span>')
         self._sentence.css_classes = ["sentence"]
         self._buttons = self._html(_BUTTONS)
         self._buttons.sizing_mode = None
@@ -68,7 +71,6 @@ class Board:
         self._gallery_head = self._html(_GALLERY_HEAD)
         self.level, self.share, self.phasor, self.section = (self._box(name) for name in PLOTS[:4])
         self.gallery = Column(self._gallery_head, self._box("gallery"), sizing_mode="stretch_both")
-        self.foot, self.changes = self._html(""), self._html("")
         self.changes.visible = False
 
     def _html(self, text, **styles):
@@ -88,8 +90,10 @@ class Board:
         models |= {**self._sent, **{f"held_{name}": sent for name, sent in self._held_sent.items()}}
         spine, section, gallery = self._spine, self._section, self._gallery
         models |= {"cursor": self.cursor, "pressed": self._pressed, "sentence": self._sentence,
+                   "strip": self.strip, "foot": self.foot, "changes": self.changes, "words": self.words,
                    "buttons": self._buttons, "gallery_head": self._gallery_head,
-                   "share_rows": spine.row_words, "share_legend": spine.legend, "share_ticks": spine.row_ticks, "share_chosen": spine.chosen,
+                   "share_rows": spine.row_words, "share_legend": spine.legend, "share_ticks": spine.row_ticks,
+                   "share_chosen": spine.chosen,
                    "row_text": spine.row_text, "level_cursor": spine.level_cursor, "share_cursor": spine.share_cursor,
                    "cursor_words": spine.cursor_words,
                    "phasor": self._phasor.chain, "phasor_held": self._phasor.held, "phasor_total": self._phasor.total,
@@ -116,7 +120,6 @@ class Board:
                     sent.data = getattr(fresh, name)
             if not len(self.cursor.data["frequency"]):
                 self.cursor.data = {"frequency": [first_cursor(overview)]}
-            self.foot.text = foot_html(overview)
             self._compare()
             self.dim(None)
 
@@ -140,8 +143,8 @@ class Board:
                 if model.styles.get("opacity", "1") != opacity:
                     model.styles = {**model.styles, "opacity": opacity}
             for name, notice in self._notices.items():
-                notice.text = "" if text is None else (
-                    f'<p class="notice" role="alert">{escape(text)}</p>' if name == "level" else LAST_GOOD)
+                _set(notice, "" if text is None else LAST_GOOD if name != "level" else
+                     f'<p class="notice" role="alert">{escape(text)}</p>')
                 notice.visible = text is not None
 
     def set_dark(self, dark):
@@ -162,13 +165,20 @@ class Board:
     def _compare(self):
         if self._overview is None:
             return
-        self.strip.text = strip_html(self._overview, self._held)
-        self.changes.text = changes_html(self._held, self._overview) if self._held else ""
+        changes = changes_html(self._held, self._overview) if self._held else ""
+        self.words.data = {"strip": [strip_html(self._overview, self._held)], "foot": [foot_html(self._overview)],
+                           "changes": [changes]}
         self.changes.visible = self._held is not None
 
     def _hold(self):
         document = self._spine.level.document
         return hold_events(document) if document else nullcontext()
+
+
+def _set(words, text):
+    """Set HTML only where it changes: an unchanged one is drawn anew too."""
+    if words.text != text:
+        words.text = text
 
 
 def first_cursor(overview):

@@ -15,23 +15,38 @@ const setWord = (page, model, key, text, hidden = false) => {
   if (element.textContent !== text) element.textContent = text
   element.hidden = hidden
 }
+// HTML written by the server (everything that came from a user is escaped there); changing a Div's text instead would
+// have Bokeh lay out the page anew.
+const setHtml = (model, key, html) => {
+  const element = viewOf(model)?.shadow_el.querySelector(`[data-word="${key}"]`)
+  if (element && element.dataset.shown !== html) {
+    element.innerHTML = html
+    element.dataset.shown = html
+  }
+}
 
-// Draws on the next microtask, once however many sources of one message changed.
-const redraw = (page) => {
+// Draws on the next microtask, once however many sources of one message changed: what the cursor moves, or everything.
+const redraw = (page, all = true) => {
+  page.all ||= all
   if (page.asked) return
   page.asked = true
   queueMicrotask(() => {
-    page.asked = false
-    if (!page.now) return
+    const { m, now, all } = page
+    page.asked = page.all = false
+    if (!now) return
+    if (all) {
+      drawRows(page)
+      layGallery(page)
+      laySection(page)
+    }
     drawCursor(page)
-    drawRows(page)
     drawPhasor(page)
-    drawSection(page)
-    drawGallery(page)
-    setWord(page, page.m.section_menu, "pause", page.playing ? "pause" : "play")
-    viewOf(page.m.buttons)?.shadow_el.querySelector("[data-act=keys]")?.setAttribute("aria-pressed", String(page.keys))
-    const text = sentence(page.now, page.turns, page.f)
-    if (page.m.sentence.text !== text) page.m.sentence.text = text
+    setSection(page)
+    markGallery(page)
+    for (const part of ["strip", "foot", "changes"]) setHtml(m[part], part, m.words.data[part][0] ?? "")
+    setWord(page, m.sentence, "sentence", sentence(now, page.turns, page.f))
+    setWord(page, m.section_menu, "pause", page.playing ? "pause" : "play")
+    viewOf(m.buttons)?.shadow_el.querySelector("[data-act=keys]")?.setAttribute("aria-pressed", String(page.keys))
   })
 }
 const reread = (page) => {
@@ -63,8 +78,9 @@ const boot = (m) => {
     setPlaying(page, page.playing)
     redraw(page)
   }
-  for (const model of [m.gallery_head, m.buttons, m.section_menu]) {   // their words are lost when they are drawn anew
-    model.connect(model.properties.styles.change, () => redraw(page))
+  m.words.connect(m.words.properties.data.change, () => redraw(page, false))
+  for (const model of [m.strip, m.foot, m.changes, m.sentence, m.gallery_head, m.buttons, m.section_menu]) {   // their words are lost when they are drawn anew
+    model.connect(model.change, () => redraw(page))
   }
   for (const name of PLOTS) {
     const { inner_width, inner_height } = m[name].properties

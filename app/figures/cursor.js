@@ -4,7 +4,7 @@ const moveCursor = (page, f) => {
   if (!now || !Number.isFinite(f)) return
   page.f = Math.min(Math.max(f, now.low, now.frequency[0]), now.high, now.frequency[now.n - 1])
   m.cursor.data = { frequency: [page.f] }
-  redraw(page)
+  redraw(page, false)
 }
 const toNearest = (page, f) => moveCursor(page, page.now.frequency[nearest(page.now, f)])
 
@@ -31,7 +31,7 @@ const ACTIONS = {
   "next-dip": (page) => jump(page, page.turns.dips),
   "keys": (page) => {
     page.keys = !page.keys
-    redraw(page)
+    redraw(page, false)
   },
   "pause": (page) => setPlaying(page, !page.playing),
   "fold": (page) => {
@@ -49,7 +49,7 @@ const turnSheet = (page, step) => {
 }
 const setPlaying = (page, playing) => {
   page.playing = playing
-  redraw(page)
+  redraw(page, false)
   if (playing) animate(page)
 }
 

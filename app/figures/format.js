@@ -33,3 +33,10 @@ const KIND_ROLE = { "pumping": "pumping", "transverse": "transverse", "in-plane"
 const KIND_DASH = { "pumping": [], "transverse": [], "in-plane": [2, 2.5] }
 const KIND_WIDTH = { "pumping": 3, "transverse": 1.6, "in-plane": 2 }
 const textWidth = (text, px = 11) => 0.56 * px * text.length
+
+// Replace a source's data only where they differ: every replacement has its glyphs measured and painted anew.
+const put = (source, data) => {
+  const same = (a, b) => a.length === b.length &&
+    Array.prototype.every.call(a, (v, i) => v === b[i] || (Array.isArray(v) && Array.isArray(b[i]) && same(v, b[i])))
+  if (!Object.keys(data).every((name) => name in source.data && same(data[name], source.data[name]))) source.data = data
+}

@@ -42,8 +42,8 @@ const drawPhasor = (page) => {
     dash: column((l) => KIND_DASH[style(l.row)]),
     width: column((l) => l.row === chosen ? 3.4 : l.row < now.n_shown ? KIND_WIDTH[style(l.row)] : 1.4),
   }
-  m.phasor_held.data = { x: old.length ? [0, ...old.map((l) => l.x1)] : [], y: old.length ? [0, ...old.map((l) => l.y1)] : [] }
-  m.phasor_total.data = { x0: [0], y0: [0], x1: [p.heard], y1: [0], angle: [-Math.PI / 2] }
+  put(m.phasor_held, { x: old.length ? [0, ...old.map((l) => l.x1)] : [], y: old.length ? [0, ...old.map((l) => l.y1)] : [] })
+  put(m.phasor_total, { x0: [0], y0: [0], x1: [p.heard], y1: [0], angle: [-Math.PI / 2] })
 
   const words = { x: [], y: [], text: [], role: [], style: [], align: [] }
   const say = (sx, sy, text, role = "muted", style = "normal", align = "left") => {
@@ -72,7 +72,7 @@ const drawPhasor = (page) => {
     })
   }
   say(2, H - 8, "phase relative to the total", "muted")
-  m.phasor_words.data = words
+  put(m.phasor_words, words)
 }
 
 // A place for a label near a link's middle, clear of the lines and of the labels already placed; else the least bad one.

@@ -27,57 +27,62 @@ const drawnFactor = (field, d) => {
   return roundDown(Math.min(ROOM * d.frame_radius / field.largest, STEEPEST / Math.max(strain, 1e-12)))
 }
 
-// Everything that stands still: ranges, frame, rear, scale bar, words.
-const drawSection = (page) => {
-  const { m, now, held, f } = page, plot = m.section_plot
+// What neither the cursor nor time moves: ranges, frame, rear, shapes at rest, scale bar.
+const laySection = (page) => {
+  const { m, now, held } = page, plot = m.section_plot
   const W = plot.inner_width, H = plot.inner_height
   if (!now || !(W > 0)) return
-  const b = 1e3 * now.frame_radius, a = 1e3 * now.centre_radius
-  const chosen = sameMode(now, page.chosen)
-  const field = motionAt(now, f, chosen ? chosen.shape : null)
-  const factor = drawnFactor(field, now)
-  const heights = Array.from(now.height, (v) => 1e3 * v)
+  const b = 1e3 * now.frame_radius
+  const heights = Array.from(now.height, (v) => 1e3 * v), lowest = Math.min(...heights, 0)
   const top = Math.max(...heights, 0) + ROOM * b, half = 1.24 * b
   const area = { top: 42, bottom: H - 24 }
-  const scale = Math.min(W / (2 * half), (area.bottom - area.top) / (top - Math.min(...heights, 0) + 0.55 * b))
+  const scale = Math.min(W / (2 * half), (area.bottom - area.top) / (top - lowest + 0.55 * b))
   const ux = (sx) => (sx - W / 2) / scale, uy = (sy) => top - (sy - area.top) / scale
   plot.x_range.setv({ start: ux(0), end: ux(W) })
   plot.y_range.setv({ start: uy(H), end: uy(0) })
-  const floor = Math.max(uy(area.bottom), Math.min(...heights, 0) - 0.8 * b)
-
-  m.section_frame.data = { xs: [[-b, -b, -half, -half], [b, b, half, half]],
-                           ys: [[-0.025 * b, 0.025 * b, 0.025 * b, -0.025 * b], [-0.025 * b, 0.025 * b, 0.025 * b, -0.025 * b]] }
+  const floor = Math.max(uy(area.bottom), lowest - 0.8 * b)
+  const beam = [-0.025 * b, 0.025 * b, 0.025 * b, -0.025 * b]
+  put(m.section_frame, { xs: [[-b, -b, -half, -half], [b, b, half, half]], ys: [beam, beam] })
   const depth = now.rear_volume === null ? 0 : 1e9 * now.rear_volume / (Math.PI * b * b)
   const fits = depth > 0 && -depth > floor
   const bottom = fits ? -depth : floor
-  const post = 0.12 * b                              // a bracket under the spring
-  m.section_rear.data = depth > 0
-    ? fits ? { xs: [[-b, -b, b, b]], ys: [[0, bottom, bottom, 0]] }
-      : { xs: [broken(-b, b), broken(b, b), [-b, b]], ys: [brokenY(bottom, b), brokenY(bottom, b), [bottom, bottom]] }
-    : { xs: [[-post, post]], ys: [[floor, floor]] }
-  m.section_rest.data = outline(now)
-  m.section_held.data = held ? outline(held) : { x: [], y: [] }
-  page.moving = { field, factor, bottom, a, radius: now.radius, height: now.height, spring: now.spring_free_height !== null }
+  const post = 0.12 * b                              // a bracket under the spring of an open one
+  put(m.section_rear, depth === 0 ? { xs: [[-post, post]], ys: [[floor, floor]] }
+    : fits ? { xs: [[-b, -b, b, b]], ys: [[0, bottom, bottom, 0]] }
+    : { xs: [broken(-b, b), broken(b, b), [-b, b]], ys: [brokenY(bottom), brokenY(bottom), [bottom, bottom]] })
+  put(m.section_rest, outline(now))
+  put(m.section_held, held ? outline(held) : { x: [], y: [] })
+  const bar = roundDown(0.5 * b)
+  put(m.section_bar, { x: [ux(4), ux(4) + bar], y: [uy(H - 9), uy(H - 9)] })
+  page.laid = { ux, uy, W, H, bar, scale, bottom, fits }
+  const n = 2 * now.radius.length
+  if (m.section.data.x.length !== n) m.section.data = { x: new Float32Array(n), y: new Float32Array(n) }
+}
+const litres = (volume) => volume >= 1e-3 ? `${digits(1e3 * volume, 2)} l` : `${digits(1e6 * volume, 2)} ml`
 
+// The motion at the cursor and its words.
+const setSection = (page) => {
+  const { m, now, f, laid } = page
+  if (!now || !laid) return
+  const { ux, uy, W, H, bar, scale, bottom, fits } = laid, chosen = sameMode(now, page.chosen)
+  const field = motionAt(now, f, chosen ? chosen.shape : null), factor = drawnFactor(field, now)
+  page.moving = { field, factor, bottom, a: 1e3 * now.centre_radius, radius: now.radius, height: now.height,
+                  spring: now.spring_free_height !== null }
   const words = { x: [], y: [], text: [], role: [], style: [], align: [] }
   const say = (sx, sy, text, role = "muted", style = "normal", align = "left") => {
     words.x.push(ux(sx)); words.y.push(uy(sy)); words.text.push(text)
     words.role.push(role); words.style.push(style); words.align.push(align)
   }
   say(2, 10, chosen ? `Motion of the ${hertz(chosen.frequency)} mode` : `Motion at ${hertz(f)}`, "ink", "bold")
-  say(2, 27, `${chosen ? `its part at ${hertz(f)}: ` : ""}largest ${quantity(field.largest, "m")}, drawn × ${digits(factor)}`)
-  const bar = roundDown(0.5 * b)
-  m.section_bar.data = { x: [ux(4), ux(4) + bar], y: [uy(H - 9), uy(H - 9)] }
+  say(2, 27, `${chosen ? `at ${hertz(f)} ` : ""}largest ${quantity(field.largest, "m")}, drawn × ${digits(factor)}`)
   say(4 + bar * scale + 6, H - 9, `${digits(bar)} mm`)
-  const litres = now.rear_volume === null ? "" : now.rear_volume >= 1e-3 ? `${digits(1e3 * now.rear_volume, 2)} l` : `${digits(1e6 * now.rear_volume, 2)} ml`
-  say(W - 4, H - 9, now.rear_volume === null ? "rear open" : `rear sealed, ${litres}${fits ? "" : ", not to scale"}`, "muted", "normal", "right")
-  m.section_words.data = words
-  const n = 2 * now.radius.length
-  if (m.section.data.x.length !== n) m.section.data = { x: new Float32Array(n), y: new Float32Array(n) }
+  say(W - 4, H - 9, now.rear_volume === null ? "rear open" : `rear sealed, ${litres(now.rear_volume)}${fits ? "" : ", not to scale"}`,
+      "muted", "normal", "right")
+  put(m.section_words, words)
   paintMotion(page)
 }
 const broken = (x, b) => [x, x, x - 0.03 * b, x + 0.03 * b, x, x]
-const brokenY = (bottom, b) => [0, 0.62 * bottom, 0.66 * bottom, 0.70 * bottom, 0.74 * bottom, bottom]
+const brokenY = (bottom) => [0, 0.62 * bottom, 0.66 * bottom, 0.70 * bottom, 0.74 * bottom, bottom]
 
 // The moving parts at one moment; writes into the arrays that are there and says so.
 const paintMotion = (page) => {
@@ -95,8 +100,8 @@ const paintMotion = (page) => {
   }
   m.section.change.emit()
   const z = y[n]
-  m.section_centre.data = { x0: [-a], y0: [z], x1: [a], y1: [z] }
-  m.section_spring.data = moving.spring ? coil(bottom, z, 0.35 * a) : { x: [], y: [] }
+  put(m.section_centre, { x0: [-a], y0: [z], x1: [a], y1: [z] })
+  put(m.section_spring, moving.spring ? coil(bottom, z, 0.35 * a) : { x: [], y: [] })
 }
 const coil = (from, to, half) => {
   const turns = 14, x = [0], y = [from]

@@ -17,13 +17,14 @@ const drawRows = (page) => {
   const order = [...Array(n).keys()].sort((a, b) => matter(b) - matter(a)), kept = []
   for (const row of order) if (kept.every((k) => Math.abs(k - row) * high >= size * 0.86)) kept.push(row)
   const role = (row) => row === chosen?.row ? "accent" : row < now.n_shown ? KIND_ROLE[now.modes[row].kind] : "muted"
-  m.share_rows.data = {
+  put(m.share_rows, {
     x: kept.map(() => plot.x_range.start), y: kept.map(middle), text: kept.map(label), role: kept.map(role),
     style: kept.map((row) => row === chosen?.row || now.modes[row]?.kind === "pumping" ? "bold" : "normal"),
-  }
+  })
   // The colour scale between its two words, above the map's right end.
   const right = plot.x_range.end, wide = (right - plot.x_range.start) / plot.inner_width
-  m.share_legend.data = { ...m.share_legend.data, x: [right - 142 * wide], dw: [84 * wide], y: [n + 12 / high], dh: [9 / high] }
+  put(m.share_legend, { image: m.share_legend.data.image, x: [right - 142 * wide], dw: [84 * wide], y: [n + 12 / high],
+                        dh: [9 / high] })
   // A tick in each row at the mode's own frequency; grey where the held design has it.
   const ticks = { x0: [], y0: [], x1: [], y1: [], role: [] }
   const tick = (f, row, role, part) => {
@@ -35,7 +36,7 @@ const drawRows = (page) => {
     if (before) tick(before.frequency, mode.row, "held", 0.5)
     if (before) tick(mode.frequency, mode.row, KIND_ROLE[mode.kind], 0.3)
   }
-  m.share_ticks.data = ticks
+  put(m.share_ticks, ticks)
   m.share_chosen.setv(chosen ? { bottom: n - chosen.row - 1, top: n - chosen.row, visible: true } : { visible: false })
 }
 
@@ -49,5 +50,5 @@ const drawCursor = (page) => {
   const text = `${hertz(f)}  ${pressuresAt(now, f).level.toFixed(1).replace("-", "−")} dB`
   const W = m.level_plot.inner_width, at = W * (x - start) / (end - start), half = textWidth(text, 12) / 2
   const shift = Math.min(Math.max(0, TITLE_PX + half - at), Math.max(0, W - at)) - Math.max(0, at + half + MENU_PX - W)
-  m.cursor_words.data = { x: [x], y: [m.level_plot.y_range.end], text: [text], shift: [shift] }
+  put(m.cursor_words, { x: [x], y: [m.level_plot.y_range.end], text: [text], shift: [shift] })
 }

@@ -24,6 +24,7 @@ class Spine:
         self.share_source = source("share", image=[], x=[], y=[], dw=[], dh=[])
         self.row_words = source("share_rows", x=[], y=[], text=[], role=[], style=[])
         self.row_ticks = source("share_ticks", x0=[], y0=[], x1=[], y1=[], role=[])
+        self._drawn = None   # what the level axis shows
         self.level = self._level_plot(inks)
         self.share = self._share_plot(inks)
 
@@ -102,7 +103,10 @@ class Spine:
         """Draw another design's level in grey; None: nothing."""
         empty = {name: [] for name in ("x", "frequency", "level_db", "survival")}
         self.held_source.data = empty if columns is None else columns.level
-        held = columns is not None
+        self._name_held()
+
+    def _name_held(self):
+        held = len(self.held_source.data["x"]) > 0
         self.held_words.data = {"x": [self.x_range.start] * held, "y": [self.level.y_range.end] * held,
                                 "text": ["grey: held design"] * held}
 
@@ -118,7 +122,7 @@ class Spine:
             return
         self.x_range.update(start=low, end=high)
         self.share.y_range.end = n_rows
-        labelled, _ = frequency_ticks(*band)
+        labelled = frequency_ticks(*band)
         self.share_labels.data = {"x": np.log10(labelled), "y": [0] * len(labelled),
                                   "text": [theme.tick(f) for f in labelled]}
         self.axis_words.data = {"x": [high], "y": [0], "text": ["Frequency, Hz"]}
@@ -129,21 +133,23 @@ class Spine:
     def _level_axis(self, overview, level):
         inside = (level["frequency"] >= overview.band[0]) & (level["frequency"] <= overview.band[1])
         low, high = steady_range(level["level_db"][inside], (self.level.y_range.start, self.level.y_range.end))
+        drawn = (low, high, overview.band, level_label(overview.design.listener))
+        if drawn == self._drawn:
+            return
+        self._drawn = drawn
         self.level.y_range.update(start=low, end=high)
         start, end = self.x_range.start, self.x_range.end
         lines = np.arange(low, high + 1, 10.0)
         named = lines if high - low <= 60 else lines[lines % 20 == 0]
-        labelled, _ = frequency_ticks(*overview.band)
-        x = np.log10(labelled)
+        x = np.log10(frequency_ticks(*overview.band))
         self.level_grid.data = {"x0": np.append(np.full(len(lines), start), x),
                                 "x1": np.append(np.full(len(lines), end), x),
                                 "y0": np.append(lines, np.full(len(x), low)),
                                 "y1": np.append(lines, np.full(len(x), high))}
         self.level_labels.data = {"x": np.full(len(named), start), "y": named,
                                   "text": [theme.digits(v) for v in named]}
-        self.level_words.data = {"x": [start], "y": [high], "text": [level_label(overview.design.listener)]}
-        if self.held_words.data["x"]:
-            self.held_words.data = {"x": [start], "y": [high], "text": ["grey: held design"]}
+        self.level_words.data = {"x": [start], "y": [high], "text": [drawn[-1]]}
+        self._name_held()
 
     def _mark_estimate(self, overview):
         above, (low, high) = overview.response.estimate_above, overview.band
@@ -153,10 +159,8 @@ class Spine:
         # A narrow region is named from its left side.
         room = seen and (self.x_range.end - left) > 0.2 * (self.x_range.end - self.x_range.start)
         self.estimate_words.data = {"x": [left if room else self.x_range.end] * seen,
-                                    "y": [self.level.y_range.start] * seen,
-                                    "text": ["estimate: cone depth"] * seen,
-                                    "align": ["left" if room else "right"] * seen,
-                                    "shift": [5.0 if room else -5.0] * seen}
+                                    "y": [self.level.y_range.start] * seen, "text": ["estimate: cone depth"] * seen,
+                                    "align": ["left" if room else "right"] * seen, "shift": [5 if room else -5] * seen}
 
 
 def _veil(palette):
@@ -165,13 +169,10 @@ def _veil(palette):
 
 
 def frequency_ticks(low, high):
-    """Frequencies to name (1, 2, 5 per decade) and the ones between, within a band in Hz."""
+    """Frequencies named on the axis, 1, 2 and 5 in each decade, within a band in Hz."""
     decades = range(math.floor(math.log10(low)), math.ceil(math.log10(high)) + 1)
-    every = np.array([m * 10.0**d for d in decades for m in range(1, 10)])
-    inside = every[(every >= low * 0.999) & (every <= high * 1.001)]
-    lead = np.round(inside / 10 ** np.floor(np.log10(inside) + 1e-9))
-    named = np.isin(lead, (1, 2, 5))
-    return inside[named], inside[~named]
+    named = np.array([m * 10.0**d for d in decades for m in (1, 2, 5)])
+    return named[(named >= low * 0.999) & (named <= high * 1.001)]
 
 
 def steady_range(level, current):
