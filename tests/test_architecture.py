@@ -20,10 +20,10 @@ designfile
 material
 mesh
 film
-statics
+branch statics
 radiation_tables radiation
 rear
-source linear modes
+source linear modes motion
 circuit
 response
 summary

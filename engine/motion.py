@@ -1,0 +1,125 @@
+"""Motion of the biased film per volt of signal: the dynamic stiffness on the basis, solved octave by octave."""
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from engine import linear, material, radiation
+from engine.modes import Basis
+from engine.statics import frozen
+
+GRID_POINTS = 280               # of the even log grid, before refinement at resonances
+FEW_MODES = 14                  # below so many unknowns another octave costs more than it saves
+
+
+@dataclass(frozen=True)
+class Motion:
+    """Motion of the basis per volt of signal, without listener."""
+
+    system: linear.System
+    basis: Basis
+    frequency: np.ndarray      # (n_freq,) Hz
+    unit: np.ndarray           # (n_freq, n_basis) m/V: modes, then static corrections
+    power: np.ndarray          # (n_freq,) W/V2 to one side
+
+
+def frequency_grid(basis, low, high, n_points=GRID_POINTS):
+    """(n_freq,) Hz: an even log grid and, at every resonance narrower than it, points across the peak."""
+    even = np.geomspace(low, high, n_points)
+    f, zeta = basis.refined, basis.modes.damping_ratio
+    narrow = (f > low) & (f < high) & (zeta < 2.5*np.log(high/low)/n_points)
+    offsets = np.array([-3.0, -1.5, -0.8, -0.35, 0.0, 0.35, 0.8, 1.5, 3.0])
+    extra = (f[narrow, None]*(1 + zeta[narrow, None]*offsets)).ravel()
+    every = np.unique(np.concatenate([even, extra[(extra > low) & (extra < high)]]))
+    keep = np.append(True, np.diff(np.log(every)) > 1e-6)
+    keep[-1] = True
+    return every[keep]
+
+
+def solve_motion(system, basis, frequency):
+    """Motion at the given ascending frequencies, octave by octave from the top.
+
+    An octave's unknowns are the modes up to twice its upper end and the static answer of everything above them, so
+    every mode keeps its contribution at every frequency. Source: DEVELOPERS.md, "Response".
+    """
+    reduced = _reduce(system, basis)
+    unit = np.empty((len(frequency), len(basis.shapes)), complex)
+    power = np.empty(len(frequency))
+    stop = len(frequency)
+    while stop > 0:
+        top = frequency[stop - 1]
+        n_low = int(np.searchsorted(basis.modes.frequency, 2*top))
+        start = 0 if n_low < FEW_MODES else int(np.searchsorted(frequency, top/2, side="right"))
+        part = slice(start, stop)
+        unit[part], power[part] = _octave(system, basis, reduced, frequency[part], n_low)
+        stop = start
+    return Motion(system, basis, frozen(np.array(frequency)), frozen(unit), frozen(power))
+
+
+@dataclass(frozen=True)
+class _Reduced:
+    """Matrices of the dynamic stiffness on the basis, the load per volt, and the air's tables behind them."""
+
+    real: np.ndarray         # (3, n_basis, n_basis): K + K_rear, D0, M
+    constant_loss: np.ndarray
+    load: np.ndarray
+    static: np.ndarray       # (n_basis, 2): answers at rest to the electrode load and to a pressure
+
+
+def _reduce(system, basis):
+    P = basis.shapes
+    v, e = P @ system.volume, P[:, 0]
+    behind = system.rear.stiffness*np.outer(v, v)
+    K = P @ system.stiffness @ P.T + behind
+    load = P @ system.load
+    return _Reduced(np.stack([K, P @ system.dissipation @ P.T, (P*system.mass) @ P.T]),
+                    system.spring_loss*np.outer(e, e) + system.rear.loss_factor*behind, load,
+                    np.linalg.solve(K, np.stack([load, v], axis=1)))
+
+
+def _above(reduced, n_low, n_modes):
+    """(n_basis - n_low, n) orthonormal columns: the static answers of everything above the first n_low modes."""
+    if n_low == n_modes:
+        return np.eye(len(reduced.load) - n_low)
+    u, sizes, _ = np.linalg.svd(reduced.static[n_low:], full_matrices=False)
+    return u[:, sizes > 1e-9*sizes[0]] if sizes[0] > 0 else u[:, :0]
+
+
+def _project(X, n_low, above):
+    """(..., n, n) of matrices (..., n_basis, n_basis) on the first n_low vectors and the columns above them."""
+    right = X[..., n_low:] @ above
+    n = n_low + above.shape[1]
+    out = np.empty((*X.shape[:-2], n, n))
+    out[..., :n_low, :n_low] = X[..., :n_low, :n_low]
+    out[..., :n_low, n_low:] = right[..., :n_low, :]
+    out[..., n_low:, :n_low] = np.swapaxes(right[..., :n_low, :], -1, -2)
+    out[..., n_low:, n_low:] = above.T @ right[..., n_low:, :]
+    return out
+
+
+def _octave(system, basis, reduced, frequency, n_low):
+    """Unit motion (n_freq, n_basis) and unit power (n_freq,) of one octave whose unknowns start with n_low modes."""
+    above = _above(reduced, n_low, len(basis.modes.frequency))
+    n = n_low + above.shape[1]
+    omega = 2*np.pi*frequency
+    x = omega*system.frame_radius/system.air.sound_speed
+    S = material.viscous_modulus(omega, *system.film_losses)
+    real, loss, resistance, reactance = (_project(X, n_low, above).reshape(-1, n*n) for X in (
+        reduced.real, reduced.constant_loss, *basis.projected))
+    at = radiation.interpolation(x, basis.tables)
+    # i omega N_s Z = N_s eps rho b^3 omega^2 (i x A - B)
+    per_side = 2*np.pi*system.air.density*system.frame_radius**3*omega**2
+    heavy = per_side*system.rear.faces*system.air_load
+    one = np.ones_like(omega)
+    Z = np.empty((len(frequency), n, n), complex)
+    Z.real = (np.column_stack([one, S.real, -omega**2, -heavy[:, None]*at])
+              @ np.concatenate([real, reactance])).reshape(-1, n, n)
+    radiated = at @ resistance
+    Z.imag = ((heavy*x)[:, None]*radiated
+              + np.column_stack([S.imag, one]) @ np.concatenate([real[1:2], loss])).reshape(-1, n, n)
+    load = np.append(reduced.load[:n_low], above.T @ reduced.load[n_low:])
+    q = np.linalg.solve(Z, np.broadcast_to(load, (len(frequency), n))[..., None].astype(complex))[..., 0]
+    # omega^2/2 q^H Re Z q of one side
+    parts = np.stack([q.real, q.imag], axis=2)
+    power = omega/2*per_side*x*np.sum((radiated.reshape(-1, n, n) @ parts)*parts, axis=(1, 2))
+    return np.concatenate([q[:, :n_low], q[:, n_low:] @ above.T], axis=1), power
