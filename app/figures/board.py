@@ -42,7 +42,7 @@ class Board:
                        "section": self._section.plot, "gallery": self._gallery.plot}
         self._menus = {name: self._html(_menu_html(name), position="absolute", top="0", right="0", z_index="2")
                        for name in PLOTS}
-        self._notices = {name: self._html("", position="absolute", top="32%", left="12%", right="12%", z_index="2")
+        self._notices = {name: self._html("", position="absolute", top="32%", left="12%", width="76%", z_index="2")
                          for name in PLOTS}
         for notice in self._notices.values():
             notice.visible = False

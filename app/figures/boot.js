@@ -9,21 +9,26 @@ const LABELS = {
 const PLOTS = Object.keys(LABELS)
 const viewOf = (model) => Bokeh.index.find_one(model)
 const onScreen = (page, plot) => (viewOf(plot)?.el.getClientRects().length ?? 0) > 0
-const setWord = (page, model, key, text, hidden = false) => {
+// Words in the HTML beside the plots are written straight into it: changing a Div's text instead would have Bokeh build
+// and lay out much of the page anew. Only where a height changes the plots must take their new places.
+const write = (model, key, change) => {
   const element = viewOf(model)?.shadow_el.querySelector(`[data-word="${key}"]`)
   if (!element) return
-  if (element.textContent !== text) element.textContent = text
+  const before = element.offsetHeight
+  if (change(element) && element.offsetHeight !== before) viewOf(model).invalidate_layout()
+}
+const setWord = (model, key, text, hidden = false) => write(model, key, (element) => {
+  if (element.textContent === text && element.hidden === hidden) return false
+  element.textContent = text
   element.hidden = hidden
-}
-// HTML written by the server (everything that came from a user is escaped there); changing a Div's text instead would
-// have Bokeh lay out the page anew.
-const setHtml = (model, key, html) => {
-  const element = viewOf(model)?.shadow_el.querySelector(`[data-word="${key}"]`)
-  if (element && element.dataset.shown !== html) {
-    element.innerHTML = html
-    element.dataset.shown = html
-  }
-}
+  return true
+})
+// HTML made by the server, where everything that came from a user was escaped.
+const setHtml = (model, key, html) => write(model, key, (element) => {
+  if (element.dataset.shown === html) return false
+  element.innerHTML = element.dataset.shown = html
+  return true
+})
 
 // Draws on the next microtask, once however many sources of one message changed: what the cursor moves, or everything.
 const redraw = (page, all = true) => {
@@ -44,8 +49,8 @@ const redraw = (page, all = true) => {
     setSection(page)
     markGallery(page)
     for (const part of ["strip", "foot", "changes"]) setHtml(m[part], part, m.words.data[part][0] ?? "")
-    setWord(page, m.sentence, "sentence", sentence(now, page.turns, page.f))
-    setWord(page, m.section_menu, "pause", page.playing ? "pause" : "play")
+    setWord(m.sentence, "sentence", sentence(now, page.turns, page.f))
+    setWord(m.section_menu, "pause", page.playing ? "pause" : "play")
     viewOf(m.buttons)?.shadow_el.querySelector("[data-act=keys]")?.setAttribute("aria-pressed", String(page.keys))
   })
 }

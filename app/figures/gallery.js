@@ -88,9 +88,9 @@ const writeGalleryHead = (page, count, size) => {
   const details = chosen ? `${hertz(chosen.frequency)} ${chosen.kind} mode, chosen: ${hertz(chosen.vacuum)} in vacuum, ` +
     `${percent(chosen.centre)} of its motion's energy in the centre, ${percent(chosen.inPlane)} along the film` : folded
   const first = page.sheet * size + 1
-  setWord(page, m.gallery_head, "details", details)
-  setWord(page, m.gallery_head, "fold", page.unfolded ? "fold in-plane" : "show in-plane", n === 0)
-  setWord(page, m.gallery_head, "sheet", `${first}–${Math.min(first + size - 1, count)} of ${count}`)
+  setWord(m.gallery_head, "details", details)
+  setWord(m.gallery_head, "fold", page.unfolded ? "fold in-plane" : "show in-plane", n === 0)
+  setWord(m.gallery_head, "sheet", `${first}–${Math.min(first + size - 1, count)} of ${count}`)
 }
 
 const choose = (page, mode) => {
