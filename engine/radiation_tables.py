@@ -16,7 +16,7 @@ from itertools import pairwise
 import numpy as np
 from scipy.special import j0, j1
 
-LADDER = (4.0, 16.0, 64.0, 128.0)     # largest k b of the kept tables; beyond, multiples of 64
+LADDER = (4.0, 8.0, 16.0, 32.0, 64.0, 128.0)     # largest k b of the kept tables; beyond, multiples of 64
 ROUNDING = 16                         # tables are kept for multiples of this many polynomials
 CORE = 64                             # polynomials, up to k b = 64, that may need every term; fewer are a sub-block
 OUTER_TERMS = 16                      # terms that the polynomials beyond the core need

@@ -151,7 +151,7 @@ def _system_and_basis(design, frequency_max):
 
 def prepare():
     """Build the air's tables that ordinary designs need, so that the first response finds them; for a thread."""
-    for x_max, n in ((16.0, 64), (16.0, 80), (4.0, 48), (16.0, 96), (4.0, 64)):
+    for x_max, n in ((8.0, 64), (4.0, 48), (16.0, 112), (8.0, 80), (16.0, 96), (16.0, 80), (4.0, 64)):
         radiation.prepare(x_max, n)
 
 
