@@ -197,17 +197,17 @@ def first_cursor(overview):
 
 _EMPTY = {"rows": {"re": [], "im": []}, "motion": {"re": [], "im": []}, "shapes": {"radial": [], "axial": []},
           "nodes": {"radius": [], "height": []}, "moving": {"row": []}, "still": {"n_rows": []}}
-_BUTTONS = ('<div class="bar" role="group" aria-label="Cursor">'
-            '<button data-act="previous-peak" title="key p">‹ peak</button>'
-            '<button data-act="next-peak" title="key n">peak ›</button>'
-            '<button data-act="next-dip" title="key d">dip ›</button>'
-            '<button data-act="keys" aria-pressed="true" title="Single keys n, p, d, h on or off">keys</button></div>')
-_GALLERY_HEAD = ('<div class="bar"><b>Modes in air</b><span class="grow" data-word="details" role="status"></span>'
-                 '<button data-act="fold" data-word="fold">show in-plane</button>'
-                 '<button data-act="previous-sheet" aria-label="previous modes">‹</button>'
-                 '<span data-word="sheet"></span>'
-                 '<button data-act="next-sheet" aria-label="next modes">›</button>'
-                 '<span style="width:34px"></span></div>')
+_BUTTONS = """<div class="bar" role="group" aria-label="Cursor">
+<button data-act="previous-peak" title="key p">‹ peak</button>
+<button data-act="next-peak" title="key n" tabindex="-1">peak ›</button>
+<button data-act="next-dip" title="key d" tabindex="-1">dip ›</button>
+<button data-act="keys" aria-pressed="true" title="Single keys on or off" tabindex="-1">keys</button></div>"""
+_GALLERY_HEAD = """<div class="bar" role="group" aria-label="Modes"><b>Modes in air</b>
+<span class="grow" data-word="details" role="status"></span>
+<button data-act="fold" data-word="fold">show in-plane</button>
+<button data-act="previous-sheet" aria-label="previous modes" tabindex="-1">‹</button>
+<span data-word="sheet"></span>
+<button data-act="next-sheet" aria-label="next modes" tabindex="-1">›</button><span class="menu"></span></div>"""
 
 
 def _menu_html(name):

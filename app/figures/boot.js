@@ -15,7 +15,7 @@ const write = (model, key, change) => {
   const element = viewOf(model)?.shadow_el.querySelector(`[data-word="${key}"]`)
   if (!element) return
   const before = element.offsetHeight
-  if (change(element) && element.offsetHeight !== before) viewOf(model).invalidate_layout()
+  if (change(element) && element.offsetHeight !== before) setTimeout(() => viewOf(model)?.invalidate_layout())
 }
 const setWord = (model, key, text, hidden = false) => write(model, key, (element) => {
   if (element.textContent === text && element.hidden === hidden) return false
@@ -98,6 +98,10 @@ const boot = (m) => {
     if (button && own.some((model) => path.includes(viewOf(model)?.el))) ACTIONS[button.dataset.act](page, button)
   })
   document.addEventListener("keydown", (event) => onKey(page, event))
+  // Words measured before their typeface had come are measured again.
+  document.fonts.addEventListener("loadingdone", () => {
+    for (const model of Object.values(m)) if (model.data && "text" in model.data) model.change.emit()
+  })
   reread(page)
   laidOut()
   return page

@@ -54,6 +54,12 @@ const setPlaying = (page, playing) => {
 }
 
 const SINGLE_KEYS = { n: "next-peak", p: "previous-peak", d: "next-dip" }
+const SIDEWAYS = { ArrowRight: 1, ArrowLeft: -1 }
+// One tab stop a group of buttons: the one last entered.
+const enter = (buttons, entered) => {
+  buttons.forEach((button) => { button.tabIndex = button === entered ? 0 : -1 })
+  entered.focus()
+}
 const typing = (element) => element instanceof HTMLElement && (element.isContentEditable ||
   element.matches("textarea, select, input:not([type=range]):not([type=checkbox]):not([type=radio]):not([type=button])"))
 
@@ -74,6 +80,11 @@ const onKey = (page, event) => {
     if (event.key === "ArrowRight") return done(stepChoice(page, 1))
     if (event.key === "ArrowLeft") return done(stepChoice(page, -1))
     if (event.key === "Escape") return done(choose(page, null))
+  }
+  const bar = path.find((e) => e instanceof HTMLElement && e.classList.contains("bar"))
+  if (bar && path[0].matches("button") && event.key in SIDEWAYS) {
+    const buttons = [...bar.querySelectorAll("button:not([hidden])")]
+    return done(enter(buttons, buttons.at((buttons.indexOf(path[0]) + SIDEWAYS[event.key]) % buttons.length)))
   }
   if (focused("section_plot") && event.key === " ") return done(setPlaying(page, !page.playing))
   if (!page.keys || event.shiftKey || event.key.length !== 1) return

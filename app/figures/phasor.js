@@ -52,7 +52,7 @@ const drawPhasor = (page) => {
   }
   say(2, 10, `Pressures at ${hertz(f)}, head to tail`, "ink", "bold")
   say(2, 27, `total ${quantity(p.heard, "Pa")} (peak), to the right`, "accent")
-  const longest = [...links].sort((a, b) => b.size - a.size).filter((l) => l.size > 0).slice(0, 3)
+  const longest = [...links].sort((a, b) => b.size - a.size).filter((l) => l.size > 0.01 * p.made).slice(0, 3)
   const label = (row) => row < now.n_shown ? bareHertz(now.modes[row].frequency) : row === now.n_rows - 1 ? "residual" : "others"
   const taken = []
   const drawn = [...links, { x0: 0, y0: 0, x1: p.heard, y1: 0 }].map((l) => [px(l.x0), py(l.y0), px(l.x1), py(l.y1)])

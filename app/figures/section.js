@@ -37,7 +37,8 @@ const laySection = (page) => {
   const top = Math.max(...heights, 0) + ROOM * b, half = 1.24 * b
   const area = { top: 42, bottom: H - 24 }
   const scale = Math.min(W / (2 * half), (area.bottom - area.top) / (top - lowest + 0.55 * b))
-  const ux = (sx) => (sx - W / 2) / scale, uy = (sy) => top - (sy - area.top) / scale
+  const spare = Math.max(0, area.bottom - area.top - scale * (top - lowest + 0.8 * b)) / 2   // in the middle of its place
+  const ux = (sx) => (sx - W / 2) / scale, uy = (sy) => top - (sy - area.top - spare) / scale
   plot.x_range.setv({ start: ux(0), end: ux(W) })
   plot.y_range.setv({ start: uy(H), end: uy(0) })
   const floor = Math.max(uy(area.bottom), lowest - 0.8 * b)
@@ -76,7 +77,7 @@ const setSection = (page) => {
   say(2, 10, chosen ? `Motion of the ${hertz(chosen.frequency)} mode` : `Motion at ${hertz(f)}`, "ink", "bold")
   say(2, 27, `${chosen ? `at ${hertz(f)} ` : ""}largest ${quantity(field.largest, "m")}, drawn × ${digits(factor)}`)
   say(4 + bar * scale + 6, H - 9, `${digits(bar)} mm`)
-  say(W - 4, H - 9, now.rear_volume === null ? "rear open" : `rear sealed, ${litres(now.rear_volume)}${fits ? "" : ", not to scale"}`,
+  say(W - 4, H - 9, now.rear_volume === null ? "rear open" : `rear ${litres(now.rear_volume)}${fits ? "" : ", not to scale"}`,
       "muted", "normal", "right")
   put(m.section_words, words)
   paintMotion(page)

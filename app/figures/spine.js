@@ -13,7 +13,8 @@ const drawRows = (page) => {
   const middle = (row) => n - row - 0.5
   const label = (row) => row < now.n_shown ? bareHertz(now.modes[row].frequency) : row === n - 1 ? "residual" : `${now.n_others} others`
   // Where rows are lower than their text, the ones that matter most keep their label.
-  const matter = (row) => (row === chosen?.row ? 2 : 0) + (now.modes[row]?.share ?? (row === n - 1 ? 1 : 0))
+  const matter = (row) => (row === chosen?.row ? 2 : 0) +
+    (now.modes[row]?.kind === "pumping" || row === n - 1 ? 1 : now.modes[row]?.share ?? 0)
   const order = [...Array(n).keys()].sort((a, b) => matter(b) - matter(a)), kept = []
   for (const row of order) if (kept.every((k) => Math.abs(k - row) * high >= size * 0.86)) kept.push(row)
   const role = (row) => row === chosen?.row ? "accent" : row < now.n_shown ? KIND_ROLE[now.modes[row].kind] : "muted"

@@ -9,7 +9,7 @@ from app import theme
 from app.figures.canvas import bare_plot, gridlines, source, span, text
 
 LEFT, RIGHT, TOP = 62, 14, 26        # px of the margins, the same for both plots
-LEVEL_BOTTOM, SHARE_BOTTOM = 6, 38
+LEVEL_BOTTOM, SHARE_BOTTOM = 20, 38
 MENU, SCALE = 26, 84                 # px: kept free for the save menu, length of the colour scale
 MOST_DB, LEAST_DB = 80, 40           # height of the level axis
 
@@ -36,6 +36,7 @@ class Spine:
         plot.add_layout(self.estimate)
         self.level_grid = source(x0=[], y0=[], x1=[], y1=[])
         self.level_labels = source(x=[], y=[], text=[])
+        self.level_ticks = source(x=[], y=[], text=[])
         self.level_words = source(x=[], y=[], text=[])
         self.estimate_words = source(x=[], y=[], text=[], align=[], shift=[])
         self.held_words = source(x=[], y=[], text=[])
@@ -46,6 +47,7 @@ class Spine:
         plot.add_glyph(self.held_source, held)
         plot.add_glyph(self.level_source, line)
         text(plot, inks, self.level_labels, text_align="right", text_baseline="middle", x_offset=-8)
+        text(plot, inks, self.level_ticks, text_align="center", text_baseline="alphabetic", y_offset=14)
         text(plot, inks, self.level_words, size=12, color="ink", text_align="left", x_offset=-LEFT + 8, y_offset=-10)
         text(plot, inks, self.held_words, text_align="left", x_offset=6, y_offset=15)
         text(plot, inks, self.estimate_words, text_align={"field": "align"}, x_offset={"field": "shift"}, y_offset=-5)
@@ -141,7 +143,10 @@ class Spine:
         start, end = self.x_range.start, self.x_range.end
         lines = np.arange(low, high + 1, 10.0)
         named = lines if high - low <= 60 else lines[lines % 20 == 0]
-        x = np.log10(frequency_ticks(*overview.band))
+        labelled = frequency_ticks(*overview.band)
+        x = np.log10(labelled)
+        named_hz = [theme.tick(f) for f in labelled[:-1]] + [theme.tick(labelled[-1]) + " Hz"]
+        self.level_ticks.data = {"x": x, "y": np.full(len(x), low), "text": named_hz}
         self.level_grid.data = {"x0": np.append(np.full(len(lines), start), x),
                                 "x1": np.append(np.full(len(lines), end), x),
                                 "y0": np.append(lines, np.full(len(x), low)),
@@ -176,17 +181,17 @@ def frequency_ticks(low, high):
 
 
 def steady_range(level, current):
-    """Level axis in steps of 10 dB: the current one as long as the data stay well inside, never over MOST_DB high.
+    """Level axis (low, high) in dB, in steps of 10: the current one as long as it suits, never over MOST_DB high.
 
-    A narrow deep dip may be cut off; the lowest 2 % of the points do not count.
+    A deep dip is cut off at the lower end rather than squeezing everything else.
     """
-    top, bottom = float(np.max(level)), float(np.percentile(level, 2))
     low, high = current
-    if high - 22 < top < high - 1 and low - 2 < bottom < low + 32 and high - low <= MOST_DB:
+    top, bottom = float(np.max(level)), max(float(np.min(level)), float(np.max(level)) - MOST_DB)
+    if high - 22 < top < high - 1 and low - 12 < bottom < low + 32 and LEAST_DB <= high - low <= MOST_DB:
         return current
-    high = 10 * math.ceil((top + 4) / 10)
-    low = 10 * math.floor((bottom - 1) / 10)
-    return float(min(max(low, high - MOST_DB), high - LEAST_DB)), float(high)
+    high = 10.0 * math.ceil((top + 2) / 10)
+    low = 10.0 * math.floor(bottom / 10)
+    return min(max(low, high - MOST_DB), high - LEAST_DB), high
 
 
 def level_label(listener):

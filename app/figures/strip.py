@@ -69,24 +69,23 @@ def foot_html(overview):
 def changes_html(held, overview):
     """Table of the key figures: held, now, difference."""
     old, new = held.key_figures, overview.key_figures
-    rows = [_row("Pumping frequency", old.pumping_frequency, new.pumping_frequency, "Hz"),
-            _row("First break-up in air", old.first_break_up_frequency, new.first_break_up_frequency, "Hz"),
-            _row("Mean level in the band", old.mean_level_db, new.mean_level_db, "dB"),
-            _row("Ripple in the band", old.ripple_db, new.ripple_db, "dB"),
-            _row("Peak field over breakdown", old.breakdown_ratio, new.breakdown_ratio, "%", 100),
-            _row("Height of the centre", old.centre_height, new.centre_height, "mm", 1000, 2)]
+    rows = [_row("Pumping, Hz", old.pumping_frequency, new.pumping_frequency),
+            _row("First break-up, Hz", old.first_break_up_frequency, new.first_break_up_frequency),
+            _row("Mean level, dB", old.mean_level_db, new.mean_level_db),
+            _row("Ripple, dB", old.ripple_db, new.ripple_db),
+            _row("Field / breakdown, %", old.breakdown_ratio, new.breakdown_ratio, 100),
+            _row("Centre height, mm", old.centre_height, new.centre_height, 1000, 2)]
     head = "".join(f'<th scope="col">{word}</th>' for word in ("", "held", "now", "difference"))
-    return (f'<table class="changes"><caption>What changed since <q>{escape(held.design.name)}</q> was held</caption>'
+    return (f'<table class="changes"><caption>Changed since <q>{escape(held.design.name)}</q> was held</caption>'
             f"<thead><tr>{head}</tr></thead><tbody>{''.join(rows)}</tbody></table>")
 
 
-def _row(label, old, new, unit, factor=1, places=1):
+def _row(label, old, new, factor=1, places=1):
     """One figure in three cells, the difference between the printed values."""
     shown = [None if value is None else round(factor * value, places) for value in (old, new)]
-    cells = ["none" if value is None else _fixed(value, places) + f" {unit}" for value in shown]
-    changed_in = "points" if unit == "%" else unit
-    change = "–" if None in shown else f"{_fixed(shown[1] - shown[0], places, '+')} {changed_in}"
-    return f'<tr><th scope="row">{label}</th>' + "".join(f"<td>{cell}</td>" for cell in (*cells, change)) + "</tr>"
+    cells = ["none" if value is None else _fixed(value, places) for value in shown]
+    cells.append("–" if None in shown else _fixed(shown[1] - shown[0], places, "+"))
+    return f'<tr><th scope="row">{label}</th>' + "".join(f"<td>{cell}</td>" for cell in cells) + "</tr>"
 
 
 def _fixed(value, places, sign=""):

@@ -1,10 +1,12 @@
 // One plain sentence about the cursor's frequency.
-const modeName = (d, row) => {
-  if (row < d.n_shown) {
-    const { frequency, kind } = d.modes[row]
-    return `the ${hertz(frequency)} ${kind === "transverse" ? "film" : kind} mode`
-  }
-  return row === d.n_rows - 1 ? "the residual" : "the other modes together"
+const kindWord = (kind) => kind === "transverse" ? "film" : kind
+const modeName = (d, row) => row < d.n_shown ? `the ${hertz(d.modes[row].frequency)} ${kindWord(d.modes[row].kind)} mode`
+  : row === d.n_rows - 1 ? "the residual" : "the other modes together"
+const twoNames = (d, [first, second]) => {
+  const a = d.modes[first], b = d.modes[second]
+  return a && b && a.kind === b.kind
+    ? `the ${hertz(a.frequency)} and the ${hertz(b.frequency)} ${kindWord(a.kind)} modes`
+    : `${modeName(d, first).replace(/ mode$/, "")} and ${modeName(d, second)}`
 }
 
 // What the cursor stands on: "peak", "dip" or "", within half a percent of frequency or one grid point.
@@ -30,16 +32,15 @@ const sentence = (d, turns, f) => {
   const { along, order, pair } = ranked(p)
   const [lead, next] = order
   const heard = `${percent(p.survival)} of what the motions make is heard`
-  const names = pair.map((row) => modeName(d, row))
   const two = pair[0] !== pair[1] && p.survival < 0.5
   let text
-  if (where === "dip" && two) text = `${names[0]} and ${names[1]} cancel`
+  if (where === "dip" && two) text = `${twoNames(d, pair)} cancel`
   else if (where === "dip") text = `little moves: the dip is a lack of motion, not a cancellation`
   else if (where === "peak" && along[lead] > 0.6) text = `${modeName(d, lead)} makes the peak`
-  else if (where === "peak") text = `${modeName(d, lead)} and ${modeName(d, next)} make the peak together`
-  else if (two) text = `${names[0]} and ${names[1]} work against each other`
+  else if (where === "peak") text = `${twoNames(d, [lead, next])} make the peak together`
+  else if (two) text = `${twoNames(d, pair)} work against each other`
   else if (along[lead] > 0.6) text = `${modeName(d, lead)} makes most of the sound`
-  else text = `${modeName(d, lead)} and ${modeName(d, next)} make most of the sound`
-  const estimate = f >= d.estimate_above ? " (an estimate here: cone depth)" : ""
+  else text = `${twoNames(d, [lead, next])} make most of the sound`
+  const estimate = f >= d.estimate_above ? " (estimate)" : ""
   return `At ${hertz(f)}: ${text}; ${heard}${estimate}.`
 }
