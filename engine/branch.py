@@ -99,29 +99,41 @@ def unbiased(film):
 
 
 def follow(film, q, K, start, stop):
-    """Follow the stable branch from voltage start to stop: (state, tangent, None), or (last, tangent, voltage it ends at).
+    """Follow the stable branch from voltage start to stop: (state, tangent, None), or (last, tangent, voltage it ends at)."""
+    end = None
+    for q, K, _, end in march(film, q, K, start, stop):      # noqa: B007
+        pass
+    return q, K, end
+
+
+def march(film, q, K, start, stop):
+    """Points (state, tangent, voltage, None) of the stable branch from start to stop, where it ends early with the voltage.
 
     Euler predictor in V^2, Newton corrector; a step counts only if the tangent stays positive definite and the
-    correction stays small against the prediction, so a snap to another branch is not taken for this one.
+    correction stays small against the prediction, so a snap to another branch is not taken for this one. The last point
+    of a branch that ends carries the voltage it ends at in place of None. Raises NotConverged.
     """
     s, goal = start**2/2, stop**2/2
     step = goal - s
     for _ in range(MOST_STEPS):
         if s >= goal:
-            return q, K, None
+            return
         step = min(step, goal - s)
         predicted = step*np.linalg.solve(K, flm.electrode_load(film, q, 1.0))
         moved = np.max(np.abs(predicted))
         near = 0.5*moved + 1e-3*film.mesh.edges[-1]
-        voltage = np.sqrt(2*(s + step)) if s + step < goal else stop
+        voltage = float(np.sqrt(2*(s + step))) if s + step < goal else stop
         with np.errstate(all="ignore"):
             found = newton(film, q + predicted, voltage, most=6) if moved < film.mesh.edges[-1] else None
         if found is not None and np.max(np.abs(found[0] - q - predicted)) <= near and is_stable(found[1]):
             (q, K), s, step = found, s + step, 1.5*step
+            yield q, K, voltage, None
         else:
             step /= 3
             if step < 2e-4*(s + step):         # 1e-4 in voltage
-                return q, K, float(np.sqrt(2*s))
+                end = float(np.sqrt(2*s))
+                yield q, K, end, end
+                return
     raise NotConverged(f"The film's shape could not be followed beyond {np.sqrt(2*s)/1e3:.4g} kV: lower the bias.")
 
 
@@ -136,3 +148,63 @@ def unresolved(film, q):
     values = film.mesh.local(np.stack(flm.expand(film, q, at_rest=True)))
     last = values @ msh.to_legendre(film.mesh.order)[-2:].T
     return np.max(np.abs(last))/film.mesh.edges[-1]
+
+
+def arc(film, q, K, voltage, length=0.1, most=200):
+    """Points (state, voltage, tangent) along the branch through turning points, by pseudo-arc-length in (q, V^2/2).
+
+    Starts at a known point and yields the next ones without end, until `most`, a return to zero voltage or a step that
+    does not converge; length is the first step; 1 moves the film by some frame radii.
+
+    Source: Keller 1977 (pseudo-arc-length continuation), Riks 1979.
+    """
+    b, s = film.mesh.edges[-1], voltage**2/2
+    F = flm.electrode_load(film, q, 1.0)
+    per_s = np.linalg.solve(K, F)
+    scale = min(b/max(np.max(np.abs(per_s)), 1e-300)*0.5, max(s, 1.0)*10)      # of s: what moves the film by half of b
+    weight = 1/(len(q)*b**2)
+    tangent = _unit(per_s, 1.0, weight, scale)
+    for _ in range(most):
+        found = _arc_step(film, q, s, tangent, length, weight, scale)
+        while found is None and length > 1e-4:
+            length /= 2
+            found = _arc_step(film, q, s, tangent, length, weight, scale)
+        if found is None or found[1] < 0:
+            return
+        q, s, K, F = found
+        turned = _unit(np.linalg.solve(K, F), 1.0, weight, scale)
+        along = weight*(turned[0] @ tangent[0]) + turned[1]*tangent[1]/scale**2
+        tangent = turned if along > 0 else (-turned[0], -turned[1])
+        length = min(1.3*length, 0.3)
+        yield q, float(np.sqrt(2*s)), K
+
+
+def _unit(dq, ds, weight, scale):
+    """(dq, ds) at length 1 in the arc's measure."""
+    length = np.sqrt(weight*(dq @ dq) + (ds/scale)**2)
+    return dq/length, ds/length
+
+
+def _arc_step(film, q, s, tangent, step, weight, scale):
+    """Newton on the equilibrium and the distance along the tangent: (state, V^2/2, tangent matrix, load), or None."""
+    dq, ds = tangent
+    q1, s1 = q + step*dq, s + step*ds
+    with np.errstate(all="ignore"):
+        for _ in range(8):
+            if s1 < 0:
+                return q1, s1, None, None
+            energy, g, K = flm.linearise(film, q1, np.sqrt(2*s1))
+            F = flm.electrode_load(film, q1, 1.0)
+            if not np.isfinite(energy) or not np.all(np.isfinite(K)):
+                return None
+            a, c = np.linalg.solve(K, np.stack([g, F], axis=1)).T
+            miss = weight*(dq @ (q1 - q)) + ds*(s1 - s)/scale**2 - step
+            change = (weight*(dq @ a) - miss)/(weight*(dq @ c) + ds/scale**2)
+            move = c*change - a
+            q1, s1 = q1 + move, s1 + change
+            size = np.max(np.abs(move))/film.mesh.edges[-1]
+            if not size < 1:
+                return None
+            if size < SETTLED:
+                return (q1, s1, K, F) if s1 >= 0 else (q1, s1, None, None)
+    return None

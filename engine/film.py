@@ -126,7 +126,7 @@ def surface_energy(film, A, B, voltage, electrodes=True):
     return W[0] - c*A*B, W[1] - c*B, W[2] - c*A, W[3], W[4] - c, W[5]
 
 
-def _strain_rows(film, e):
+def strain_rows(film, e):
     """(n_elements, 2(order+1), 2(order+1)): rows delta A of all points then delta B, columns r then z."""
     n, p1 = film.mesh.n_elements, film.mesh.order + 1
     D = reference_derivative(film.mesh.order)/film.mesh.half_length[:, None, None]
@@ -169,7 +169,7 @@ def residual(film, q, voltage):
     """dPi/dq (n_dof,) in N."""
     e = strain(film, q)
     _, wA, wB, *_ = surface_energy(film, e.A, e.B, voltage)
-    rows, _ = _strain_rows(film, e)
+    rows, _ = strain_rows(film, e)
     return _residual(film, q, rows, wA, wB)
 
 
@@ -184,7 +184,7 @@ def linearise(film, q, voltage):
     """(Pi, dPi/dq, d2Pi/dq2) of a state."""
     e = strain(film, q)
     w, wA, wB, wAA, wAB, wBB = surface_energy(film, e.A, e.B, voltage)
-    rows, D = _strain_rows(film, e)
+    rows, D = strain_rows(film, e)
     K = _quadratic(film, rows, film.area*wAA, film.area*wAB, film.area*wBB)
     p1 = film.mesh.order + 1
     stretching = D.transpose(0, 2, 1) @ (2*(film.area*wA)[..., None]*D)    # w_A delta2 A
@@ -201,7 +201,7 @@ def linearise(film, q, voltage):
 def electrode_load(film, q, voltage):
     """f = -d2Pi/dq dV (n_dof,) in N/V."""
     e = strain(film, q)
-    rows, _ = _strain_rows(film, e)
+    rows, _ = strain_rows(film, e)
     c = film.areal_capacitance*voltage*film.area
     return assemble_vector(film, (np.concatenate([c*e.B, c*e.A], axis=1)[:, None, :] @ rows)[:, 0])
 
@@ -209,7 +209,7 @@ def electrode_load(film, q, voltage):
 def dissipation(film, q):
     """D0 (n_dof, n_dof): q^T D0 q = integral of 2h(d1^2 + d2^2 + (d1 + d2)^2) dA0, d = delta lam/lam."""
     e = strain(film, q)
-    rows, _ = _strain_rows(film, e)
+    rows, _ = strain_rows(film, e)
     c = film.area*film.thickness
     # d1 = dA/2A, d2 = dB/2B; 2(d1^2 + d2^2 + (d1 + d2)^2) = 4(d1^2 + d1 d2 + d2^2)
     return assemble_matrix(film, _quadratic(film, rows, c/e.A**2, c/(2*e.A*e.B), c/e.B**2))

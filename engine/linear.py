@@ -7,11 +7,12 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from engine import air, mesh, radiation, rear, source, statics
+from engine import air, circuit, mesh, radiation, rear, source, statics
 from engine import film as flm
 
 DYNAMIC_ORDER = 10
 NODES_PER_WAVELENGTH = 3.3  # of the shortest wave of the basis; DEVELOPERS.md has the convergence
+LOWEST_FREQUENCY = 10.0     # Hz, from which the electrodes' expansion holds
 MODES_TO = 1.5              # the basis holds the modes up to this multiple of the highest frequency asked
 POLYNOMIALS_TO = 1.3        # the air's polynomials are counted at this multiple of it
 MOST_ELEMENTS = 26
@@ -28,9 +29,8 @@ class System:
     stiffness: np.ndarray        # K (n_dof, n_dof)
     mass: np.ndarray             # diagonal of M (n_dof,)
     dissipation: np.ndarray      # D0 (n_dof, n_dof)
-    load: np.ndarray             # f (n_dof,) N/V at the bias
+    circuit: circuit.Circuit     # electrodes and source; its loads are f (n_line, n_dof) N/V at the bias
     volume: np.ndarray           # s (n_dof,) m2
-    capacitance: float           # F
     source: source.Source
     projector: np.ndarray        # (n_polynomials, n_dof): Zernike coefficients of the normal velocity
     air: air.Air
@@ -81,8 +81,10 @@ def build(design, frequency_max, refinement=1.0):
     _, s = flm.swept_volume(fine, q)
     return System(
         film=fine, state=q, rest=rest, stiffness=flm.linearise(fine, q, rest.bias)[2], mass=fine.mass,
-        dissipation=flm.dissipation(fine, q), load=flm.electrode_load(fine, q, rest.bias), volume=s,
-        capacitance=flm.capacitance(fine, q), source=emitter,
+        dissipation=flm.dissipation(fine, q), volume=s,
+        circuit=circuit.build(fine, q, rest.bias, design.electrodes, design.drive, f.layers,
+                              (LOWEST_FREQUENCY, frequency_max)),
+        source=emitter,
         projector=source.flow_projection(emitter, functionals), air=gas, rear=behind, air_load=design.air.load,
         film_losses=(f.shear_modulus, f.loss_factor, f.viscosity, f.relaxation),
         spring_loss=design.centre.spring_loss_factor*design.centre.spring_rate, frame_radius=b, frequency_max=frequency_max,

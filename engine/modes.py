@@ -78,7 +78,7 @@ def solve(system, least_modes=1):
     if squares[0] <= 0:
         raise NoRestState("The rest shape is not stable against small motions: raise the prestretch or lower the bias.",
                           "slack")
-    static = _static_corrections(K, M, np.stack([system.load, system.volume]), shapes)
+    static = _static_corrections(K, M, np.concatenate([system.circuit.loads, system.volume[None]]), shapes)
     modes, scale = _describe(system, squares, shapes)
     every = np.concatenate([shapes*scale[:, None], static])
     x_max = 2*np.pi*linear.MODES_TO*system.frequency_max/system.air.sound_speed*system.frame_radius

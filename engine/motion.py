@@ -4,7 +4,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from engine import linear, material, radiation
+from engine import circuit, linear, material, radiation
 from engine.modes import Basis
 from engine.statics import frozen
 
@@ -21,6 +21,8 @@ class Motion:
     frequency: np.ndarray      # (n_freq,) Hz
     unit: np.ndarray           # (n_freq, n_basis) m/V: modes, then static corrections
     power: np.ndarray          # (n_freq,) W/V2 to one side
+    line: np.ndarray           # (n_freq, n_line) V/V: amplitudes of the circuit's functions
+    charge: np.ndarray         # (n_freq,) F: charge that has entered per volt of source
 
 
 def frequency_grid(basis, low, high, n_points=GRID_POINTS):
@@ -43,27 +45,26 @@ def solve_motion(system, basis, frequency):
     every mode keeps its contribution at every frequency. Source: DEVELOPERS.md, "Response".
     """
     reduced = _reduce(system, basis)
-    unit = np.empty((len(frequency), len(basis.shapes)), complex)
-    power = np.empty(len(frequency))
+    parts = []
     stop = len(frequency)
     while stop > 0:
         top = frequency[stop - 1]
         n_low = int(np.searchsorted(basis.modes.frequency, 2*top))
         start = 0 if n_low < FEW_MODES else int(np.searchsorted(frequency, top/2, side="right"))
-        part = slice(start, stop)
-        unit[part], power[part] = _octave(system, basis, reduced, frequency[part], n_low)
+        parts.append(_octave(system, basis, reduced, frequency[start:stop], n_low))
         stop = start
-    return Motion(system, basis, frozen(np.array(frequency)), frozen(unit), frozen(power))
+    return Motion(system, basis, frozen(np.array(frequency)),
+                  *(frozen(np.concatenate(part[::-1])) for part in zip(*parts, strict=True)))
 
 
 @dataclass(frozen=True)
 class _Reduced:
-    """Matrices of the dynamic stiffness on the basis, the load per volt, and the air's tables behind them."""
+    """Matrices of the dynamic stiffness on the basis, the loads per volt, and the air's tables behind them."""
 
     real: np.ndarray         # (3, n_basis, n_basis): K + K_rear, D0, M
     constant_loss: np.ndarray
-    load: np.ndarray
-    static: np.ndarray       # (n_basis, 2): answers at rest to the electrode load and to a pressure
+    loads: np.ndarray        # (n_line, n_basis)
+    static: np.ndarray       # (n_basis, n_line+1): answers at rest to the electrode loads and to a pressure
 
 
 def _reduce(system, basis):
@@ -71,16 +72,16 @@ def _reduce(system, basis):
     v, e = P @ system.volume, P[:, 0]
     behind = system.rear.stiffness*np.outer(v, v)
     K = P @ system.stiffness @ P.T + behind
-    load = P @ system.load
+    loads = system.circuit.loads @ P.T
     return _Reduced(np.stack([K, P @ system.dissipation @ P.T, (P*system.mass) @ P.T]),
-                    system.spring_loss*np.outer(e, e) + system.rear.loss_factor*behind, load,
-                    np.linalg.solve(K, np.stack([load, v], axis=1)))
+                    system.spring_loss*np.outer(e, e) + system.rear.loss_factor*behind, loads,
+                    np.linalg.solve(K, np.concatenate([loads, v[None]]).T))
 
 
 def _above(reduced, n_low, n_modes):
     """(n_basis - n_low, n) orthonormal columns: the static answers of everything above the first n_low modes."""
     if n_low == n_modes:
-        return np.eye(len(reduced.load) - n_low)
+        return np.eye(reduced.loads.shape[1] - n_low)
     u, sizes, _ = np.linalg.svd(reduced.static[n_low:], full_matrices=False)
     return u[:, sizes > 1e-9*sizes[0]] if sizes[0] > 0 else u[:, :0]
 
@@ -98,7 +99,7 @@ def _project(X, n_low, above):
 
 
 def _octave(system, basis, reduced, frequency, n_low):
-    """Unit motion (n_freq, n_basis) and unit power (n_freq,) of one octave whose unknowns start with n_low modes."""
+    """Motion's unit, power, line and charge of one octave whose unknowns start with n_low modes."""
     above = _above(reduced, n_low, len(basis.modes.frequency))
     n = n_low + above.shape[1]
     omega = 2*np.pi*frequency
@@ -117,9 +118,13 @@ def _octave(system, basis, reduced, frequency, n_low):
     radiated = at @ resistance
     Z.imag = ((heavy*x)[:, None]*radiated
               + np.column_stack([S.imag, one]) @ np.concatenate([real[1:2], loss])).reshape(-1, n, n)
-    load = np.append(reduced.load[:n_low], above.T @ reduced.load[n_low:])
-    q = np.linalg.solve(Z, np.broadcast_to(load, (len(frequency), n))[..., None].astype(complex))[..., 0]
+    loads = np.concatenate([reduced.loads[:, :n_low], reduced.loads[:, n_low:] @ above], axis=1)
+    each = np.linalg.solve(Z, np.broadcast_to(loads.T, (len(frequency), *loads.T.shape)).astype(complex))
+    compliance = loads @ each
+    line = circuit.voltages(system.circuit, omega, compliance)
+    q = (each @ line[..., None])[..., 0]
     # omega^2/2 q^H Re Z q of one side
     parts = np.stack([q.real, q.imag], axis=2)
     power = omega/2*per_side*x*np.sum((radiated.reshape(-1, n, n) @ parts)*parts, axis=(1, 2))
-    return np.concatenate([q[:, :n_low], q[:, n_low:] @ above.T], axis=1), power
+    unit = np.concatenate([q[:, :n_low], q[:, n_low:] @ above.T], axis=1)
+    return unit, power, line, circuit.charge(system.circuit, line, compliance)

@@ -77,12 +77,11 @@ def response(design, frequency=None, band=DEFAULT_BAND):
     share, survival = _shares(contribution, pressure)
     equilibrium = statics.judge(design, rest, motion.system.film, motion.system.state)
     omega = 2*np.pi*motion.frequency
-    charge = motion.system.capacitance + motion.unit @ (motion.basis.shapes @ motion.system.load)
     return Response(
         frequency=motion.frequency, pressure=frozen(pressure), contribution=frozen(contribution),
         stroke=frozen(np.abs(q @ motion.basis.shapes[:, 0])), displacement=frozen(q[:, :n_modes]),
         signed_share=frozen(share), survival=frozen(survival), level_db=frozen(level(pressure)),
-        impedance=frozen(1/(1j*omega*charge)), sound_power=frozen(motion.power*design.drive.amplitude**2),
+        impedance=frozen(1/(1j*omega*motion.charge)), sound_power=frozen(motion.power*design.drive.amplitude**2),
         modes=motion.basis.modes, rest=equilibrium, estimate_above=estimate_above(motion.system, equilibrium),
         findings=equilibrium.conditions + _limits(motion), motion=motion, amplitude=design.drive.amplitude,
         listener_distance=listener.distance)

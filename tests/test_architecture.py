@@ -23,9 +23,8 @@ film
 branch statics
 radiation_tables radiation
 rear
-source linear modes motion
-circuit
-response
+circuit source linear modes motion
+response window
 summary
 """.split()
 

@@ -1,0 +1,133 @@
+"""The voltage window: what the rest state and the modes do as the bias rises, and the walls it must stay between."""
+
+from dataclasses import dataclass, replace
+from itertools import islice
+
+import numpy as np
+import scipy.linalg
+
+from engine import air, linear, radiation, rear, source, statics
+from engine import film as flm
+from engine.branch import arc, follow, is_stable, march
+from engine.statics import extremes, frozen, peak_voltage
+
+HIGHEST_BIAS = 20e3           # V, the bound of the bias
+N_BIAS, N_MODES = 60, 8
+N_BEYOND = 14                 # points drawn past a turning point
+N_POLYNOMIALS = 32            # of the air's mass: enough for the lowest modes
+
+
+@dataclass(frozen=True)
+class VoltageWindow:
+    """Rest states along the branch from zero bias, past its turning point where one lies in the picture; SI, read-only.
+
+    bias is ascending up to the turning point (stable states); what follows it is drawn only (unstable or snapped).
+    frequency is NaN-free: an unstable state's imaginary frequencies are put at 0.
+    """
+
+    bias: np.ndarray             # (n_bias,) V
+    stable: np.ndarray           # (n_bias,) bool
+    centre_height: np.ndarray    # (n_bias,) m
+    peak_field: np.ndarray       # (n_bias,) V/m
+    least_stress: np.ndarray     # (n_bias,) Pa
+    capacitance: np.ndarray      # (n_bias,) F
+    frequency: np.ndarray        # (n_bias, n_modes) Hz, in air, rear included
+    slack_voltage: float | None          # where the least principal stress falls to zero
+    pull_in_voltage: float | None        # where the stable branch ends
+    breakdown_voltage: float | None      # where the largest field reaches the film's breakdown field
+
+
+def voltage_window(design, n_bias=N_BIAS, n_modes=N_MODES):
+    """Voltage window of a design: n_bias rest states from zero to beyond its bias, n_modes lowest modes at each.
+
+    The walls are searched up to the highest bias a design may have, 20 kV, each to 0.1 %; None: not reached. A turning
+    point is followed by pseudo-arc-length.
+
+    Returns: VoltageWindow.
+    Raises: NoRestState where there is no stable rest state even without bias; NotConverged.
+    """
+    start = statics.solve(design.with_values({"drive.bias": 0.0, "drive.amplitude": 0.0, "drive.law": "sine"}))
+    film, q = start.film, start.state
+    K = flm.linearise(film, q, 0.0)[2]
+    path = [(q, K, 0.0, None), *march(film, q, K, 0.0, HIGHEST_BIAS)]
+    pull_in = path[-1][3]
+    slack = _crossing(film, path, lambda q, V: extremes(film, q, V)[0][0], 0.0)
+    breakdown = _crossing(film, path, lambda q, V: -extremes(film, q, V)[1][0], -design.film.breakdown_field)
+    walls = [v for v in (slack, breakdown) if v is not None]
+    wanted = max(1.25*peak_voltage(design.drive), 1.15*min(walls, default=0.0), 100.0)
+    top = min(wanted, pull_in or HIGHEST_BIAS, HIGHEST_BIAS)
+    points = list(_stable_points(film, path, np.linspace(0.0, top, n_bias)))
+    if pull_in is not None and top == pull_in:
+        q, K, V, _ = points[-1]
+        points += [(q, K, V, None) for q, V, K in islice(arc(film, q, K, V), N_BEYOND)]
+    return _collect(design, film, points, n_modes, n_bias, slack, pull_in, breakdown)
+
+
+def _stable_points(film, path, voltages):
+    """States at ascending voltages, each from the nearest known one below."""
+    known = np.array([point[2] for point in path])
+    q, K, here = path[0][:3]
+    for V in voltages:
+        i = int(np.searchsorted(known, V, side="right")) - 1
+        if known[i] > here:
+            q, K, here = path[i][:3]
+        if here < V:
+            q, K, end = follow(film, q, K, here, V)
+            V = V if end is None else end
+            here = V
+        yield q, K, float(V), None
+
+
+def _crossing(film, path, value, level):
+    """Voltage, to 1e-4, at which value(state, voltage) falls to level on the stable path; None where it does not."""
+    values = [value(point[0], point[2]) - level for point in path]
+    fallen = next((i for i, v in enumerate(values) if v <= 0), None)
+    if fallen is None:
+        return None
+    if fallen == 0:
+        return 0.0
+    (q, K, low, _), high = path[fallen - 1], path[fallen][2]
+    f_low, f_high = values[fallen - 1], values[fallen]
+    for _ in range(60):
+        if high - low < 1e-4*high:
+            break
+        share = np.clip(f_low/(f_low - f_high), 0.02, 0.98)
+        middle = np.sqrt(low**2 + share*(high**2 - low**2))
+        there, K_there, _ = follow(film, q, K, low, middle)
+        f = value(there, middle) - level
+        if f > 0:
+            q, K, low, f_low, f_high = there, K_there, middle, f, f_high/2
+        else:
+            high, f_high, f_low = middle, f, f_low/2
+    return float(high)
+
+
+def _collect(design, film, points, n_modes, n_bias, slack, pull_in, breakdown):
+    gas = air.properties(design.air.temperature, design.air.pressure, design.air.relative_humidity)
+    behind = rear.from_design(design, gas)
+    extreme = [extremes(film, q, V) for q, _, V, _ in points]
+    return VoltageWindow(
+        bias=frozen(np.array([V for _, _, V, _ in points])),
+        stable=frozen(np.array([i < n_bias or is_stable(K) for i, (_, K, _, _) in enumerate(points)])),
+        centre_height=frozen(np.array([q[0] for q, *_ in points])),
+        peak_field=frozen(np.array([field for _, (field, _) in extreme])),
+        least_stress=frozen(np.array([stress for (stress, _), _ in extreme])),
+        capacitance=frozen(np.array([flm.capacitance(film, q) for q, *_ in points])),
+        frequency=frozen(np.array([_frequencies(design, film, q, K, gas, behind, n_modes) for q, K, _, _ in points])),
+        slack_voltage=slack, pull_in_voltage=pull_in, breakdown_voltage=breakdown)
+
+
+def _frequencies(design, film, q, K, gas, behind, n_modes):
+    """(n_modes,) Hz of the lowest modes in air about a state on the static mesh; imaginary ones at 0."""
+    b = film.mesh.edges[-1]
+    M = np.diag(film.mass)
+    if design.air.load:
+        emitter = source.sample(film, q, film.mesh.order + 12)
+        rows = radiation.projection_matrix(emitter.radius/b, N_POLYNOMIALS)/(2*np.pi*b**2)
+        c = source.flow_projection(emitter, rows)
+        M += behind.faces*gas.density*b**3*(c.T @ (radiation.static_mass_matrix(N_POLYNOMIALS) @ c))
+    if behind.stiffness:
+        s = flm.swept_volume(film, q)[1]
+        K = K + behind.stiffness*np.outer(s, s)
+    squares = scipy.linalg.eigh(K, M, eigvals_only=True, check_finite=False)[:n_modes]
+    return np.sqrt(np.maximum(squares, 0))/(2*np.pi)
