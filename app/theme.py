@@ -41,7 +41,7 @@ LIGHT = Palette(page="#fbfaf7", ink="#1c2934", muted="#56636e", faint="#e3e0d8",
                 pumping="#1c2934", transverse="#1f6796", in_plane="#80756b", adds="#642a75", cancels="#17694b",
                 estimate="#f0ece1", warn="#b3261e")
 DARK = Palette(page="#14191d", ink="#e4e8ea", muted="#9ca8b1", faint="#2b333a", held="#59646d", accent="#f0a540",
-               pumping="#e4e8ea", transverse="#62b0e0", in_plane="#b3a698", adds="#d394e2", cancels="#52bd8e",
+               pumping="#e4e8ea", transverse="#4aa0d8", in_plane="#948a80", adds="#e9b8f5", cancels="#4fd6a0",
                estimate="#1e252a", warn="#ff8f80")
 
 
@@ -138,9 +138,12 @@ def percent(ratio):
     return f"{value:.0f} %".replace("-", "−") if abs(value) >= 9.95 else f"{digits(value, 2)} %"
 
 
+SILENCE_DB = -200.0  # no sound at all: the engine's floor is far below
+
+
 def decibel(value):
-    """A level: "54 dB"; one place below 10 dB of difference is ``f"{value:+.1f}"`` at the call."""
-    return f"{value:.0f} dB".replace("-", "−")
+    """A level: "54 dB", or "silent" where nothing is heard at all."""
+    return "silent" if value < SILENCE_DB else f"{value:.0f} dB".replace("-", "−")
 
 
 def file_stem(name):

@@ -21,7 +21,6 @@ const percent = (ratio) => {
   if (value > 0 && value < 0.1) return "under 0.1 %"
   return value >= 9.95 ? `${value.toFixed(0)} %` : `${digits(value, 2)} %`
 }
-const decibel = (value) => `${value.toFixed(0)} dB`.replace("-", "−")
 // The largest of 1, 1.5, 2, 2.5, 3, 4, 5, 6, 8 times a power of ten that is not above value.
 const roundDown = (value) => {
   const power = 10 ** Math.floor(Math.log10(value))

@@ -48,7 +48,8 @@ const drawCursor = (page) => {
   m.level_cursor.setv({ location: x })
   m.share_cursor.setv({ location: x })
   // The reading stands above the cursor, clear of the axis's title and of the menu.
-  const text = `${hertz(f)}  ${pressuresAt(now, f).level.toFixed(1).replace("-", "−")} dB`
+  const { level, heard } = pressuresAt(now, f)
+  const text = `${hertz(f)}  ${heard > 0 ? `${level.toFixed(1).replace("-", "−")} dB` : "silent"}`
   const W = m.level_plot.inner_width, at = W * (x - start) / (end - start), half = textWidth(text, 12) / 2
   const shift = Math.min(Math.max(0, TITLE_PX + half - at), Math.max(0, W - at)) - Math.max(0, at + half + MENU_PX - W)
   put(m.cursor_words, { x: [x], y: [m.level_plot.y_range.end], text: [text], shift: [shift] })

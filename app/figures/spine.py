@@ -186,6 +186,8 @@ def steady_range(level, current):
     A deep dip is cut off at the lower end rather than squeezing everything else.
     """
     low, high = current
+    if np.max(level) < theme.SILENCE_DB:
+        return current
     top, bottom = float(np.max(level)), max(float(np.min(level)), float(np.max(level)) - MOST_DB)
     if high - 22 < top < high - 1 and low - 12 < bottom < low + 32 and LEAST_DB <= high - low <= MOST_DB:
         return current
