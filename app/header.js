@@ -110,7 +110,7 @@ export function render({model, el}) {
     setTimeout(() => { for (const field of passed) { field.inert = false } }, 0)
   }
   function step(path, event) {
-    const group = path.find((node) => node.classList?.contains("group"))
+    const group = path.find((node) => node.shadowRoot && node.classList.contains("group"))
     const target = path[0]
     if (!group || !(target.matches?.(".fold") || is_text(target)) || target.matches("select")) { return }
     const heading = deep(".fold", group.shadowRoot)[0]

@@ -46,11 +46,12 @@ def page(design):
                       meta_title=PRODUCT, sizing_mode="stretch_both")
     frame.param.watch(lambda event: response.set_dark(event.new), "dark_theme")
     session.start()
+    pn.state.onload(session.connected)
     return frame
 
 
 def open_address(state):
-    """Begin with the design in the address (``?d=...``); a bad one is told, and leaves both the design and the address.
+    """Begin with the design in the address (``?d=...``); a bad one is told, and taken out of the address.
 
     Parameters
     ----------
@@ -63,9 +64,13 @@ def open_address(state):
     try:
         state.open_link(given[0])
     except ValueError as error:
-        location.search = ""
         text = f"{str(error)[:1].upper()}{str(error)[1:]} Shown instead: {state.design.name}."
-        pn.state.onload(lambda: tell(text))
+
+        def say():
+            location.search = ""
+            tell(text)
+
+        pn.state.onload(say)
 
 
 def failed(error):

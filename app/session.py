@@ -27,7 +27,7 @@ class Session(param.Parameterized):
     ----------
     state : DesignState
     document : bokeh.document.Document or None
-        Where results are shown; None publishes at once (tests, scripts).
+        Where results are shown, once `connected` is called; None publishes at once (tests, scripts).
     updater : callable
         Makes the access to the worker from (compute, publish); replaced in tests.
     """
@@ -41,6 +41,8 @@ class Session(param.Parameterized):
     def __init__(self, state, document=None, updater=None):
         super().__init__(state=state)
         self._document = document
+        self._connected = document is None
+        self._waiting = {}           # what to publish once the browser is there
         self._closed = False
         updater = updater or _shared_updater
         self._shown = updater(self._publish)
@@ -51,6 +53,16 @@ class Session(param.Parameterized):
     def start(self):
         """Ask for the first overview."""
         self._ask()
+
+    def connected(self):
+        """The browser has the document: from now on, and with what has waited, results are published.
+
+        What changes between the browser's copy of the document and its connection would be lost on the way.
+        """
+        self._connected = True
+        for take, outcome in self._waiting.items():
+            self._in_document(take, outcome)
+        self._waiting = {}
 
     def hold(self):
         """Hold the design shown as the grey reference, or let the held one go."""
@@ -93,20 +105,22 @@ class Session(param.Parameterized):
 
     def _publish(self, outcome):
         """Take a result or a failure to the document."""
-        self._in_document(partial(self._take, outcome))
+        self._in_document(self._take, outcome)
 
     def _publish_held(self, outcome):
         """Take the held design's result to the document."""
-        self._in_document(partial(self._take_held, outcome))
+        self._in_document(self._take_held, outcome)
 
-    def _in_document(self, change):
-        """Run a change under the document's lock, or at once without a document."""
+    def _in_document(self, take, outcome):
+        """Publish under the document's lock, or at once without a document; wait for a browser that is not there yet."""
         if self._closed:
             return
-        if self._document is None:
-            change()
+        if not self._connected:
+            self._waiting[take] = outcome
+        elif self._document is None:
+            take(outcome)
         else:
-            self._document.add_next_tick_callback(change)
+            self._document.add_next_tick_callback(partial(take, outcome))
 
     def _take(self, outcome):
         """Publish result, problem and busy in one update."""

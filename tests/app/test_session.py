@@ -118,6 +118,8 @@ def test_a_visit_ends_with_its_document(design, at_once):
     document = Document()
     session = visit(design, document, at_once(slack_above(2.0)))
     session.start()
+    assert document.ticks == ()
+    session.connected()
     assert len(document.ticks) == 1
     assert session.overview is None
     document.ends[0](None)
