@@ -8,12 +8,15 @@ the listener are positive. Inputs and results are frozen dataclasses holding rea
 from engine.design import Air, Centre, Design, Drive, Electrodes, Film, Geometry, Listener, Rear
 from engine.designfile import load, save
 from engine.errors import InvalidDesign, NoRestState, NotConverged
+from engine.limits import Excursion, Margin, breakdown_band, excursion, margins
 from engine.modes import Modes, modes
 from engine.response import Response, prepare, response
 from engine.statics import Equilibrium, Finding, equilibrium
 from engine.summary import KeyFigures, Overview, energy_share, key_figures, overview
+from engine.window import VoltageWindow, voltage_window
 
 __all__ = [
-    "Air", "Centre", "Design", "Drive", "Electrodes", "Equilibrium", "Film", "Finding", "Geometry", "InvalidDesign",
-    "KeyFigures", "Listener", "Modes", "NoRestState", "NotConverged", "Overview", "Rear", "Response", "energy_share",
-    "equilibrium", "key_figures", "load", "modes", "overview", "prepare", "response", "save"]
+    "Air", "Centre", "Design", "Drive", "Electrodes", "Equilibrium", "Excursion", "Film", "Finding", "Geometry",
+    "InvalidDesign", "KeyFigures", "Listener", "Margin", "Modes", "NoRestState", "NotConverged", "Overview", "Rear",
+    "Response", "VoltageWindow", "breakdown_band", "energy_share", "equilibrium", "excursion", "key_figures",
+    "load", "margins", "modes", "overview", "prepare", "response", "save", "voltage_window"]

@@ -100,9 +100,7 @@ def unbiased(film):
 
 def follow(film, q, K, start, stop):
     """Follow the stable branch from voltage start to stop: (state, tangent, None), or (last, tangent, voltage it ends at)."""
-    end = None
-    for q, K, _, end in march(film, q, K, start, stop):      # noqa: B007
-        pass
+    *_, (q, K, _, end) = [(q, K, start, None), *march(film, q, K, start, stop)]
     return q, K, end
 
 

@@ -25,7 +25,7 @@ class Circuit:
     """Line and source on n_line functions, the first of which is 1.
 
     loads (n_line, n_dof) N/V: Gamma on each function; capacitance, conductance (n_line, n_line) F, S; inner (n_line,):
-    the functions at the inner edge; source_resistance ohm.
+    the functions at the inner edge; source_resistance ohm; functions (n_line, n_nodes) on the mesh.
     """
 
     loads: np.ndarray
@@ -33,6 +33,7 @@ class Circuit:
     conductance: np.ndarray
     inner: np.ndarray
     source_resistance: float
+    functions: np.ndarray
 
 
 def sheet_pair_resistance(resistance, layers):
@@ -54,7 +55,7 @@ def build(film, q, voltage, electrodes, drive, layers, band):
         Y = _conductance(film, q, resistance)
         functions = np.concatenate([functions, _expansion(Y, c, gamma, band)])
     return Circuit(functions @ gamma.T, (functions*c) @ functions.T, functions @ Y @ functions.T, functions[:, 0],
-                   drive.source_resistance)
+                   drive.source_resistance, functions)
 
 
 def _line(film, q, voltage):

@@ -33,7 +33,14 @@ class Response:
     signed_share: np.ndarray   # (n_freq, n_modes+1) Re(contribution conj(pressure)) / (|pressure| sum |contribution|)
     survival: np.ndarray       # (n_freq,) |pressure| / sum |contribution|
     level_db: np.ndarray       # (n_freq,) dB re 20 uPa
-    impedance: np.ndarray      # (n_freq,) complex ohm, the motion's part included
+    impedance: np.ndarray      # (n_freq,) complex ohm, source to film, the motion's part included
+    current: np.ndarray        # (n_freq,) complex A, out of the source, were it not limited
+    electrode_voltage: np.ndarray   # (n_freq,) complex V on the film at its inner edge
+    apparent_power: np.ndarray      # (n_freq,) VA
+    dissipated_power: np.ndarray    # (n_freq,) W, out of the source
+    limited_level_db: np.ndarray    # (n_freq,) dB, with the drive turned down where the current limit asks for it
+    charging_corner: float | None   # Hz: from there less than 1/sqrt 2 of the voltage reaches the inner edge
+    current_limited_above: float | None   # Hz, lowest frequency at which the current limit is reached
     sound_power: np.ndarray    # (n_freq,) W, to the listener's side
     modes: Modes
     rest: Equilibrium
@@ -76,15 +83,47 @@ def response(design, frequency=None, band=DEFAULT_BAND):
     pressure = p.sum(axis=1)
     share, survival = _shares(contribution, pressure)
     equilibrium = statics.judge(design, rest, motion.system.film, motion.system.state)
-    omega = 2*np.pi*motion.frequency
+    electrical = _electrical(design, motion, pressure)
     return Response(
         frequency=motion.frequency, pressure=frozen(pressure), contribution=frozen(contribution),
         stroke=frozen(np.abs(q @ motion.basis.shapes[:, 0])), displacement=frozen(q[:, :n_modes]),
         signed_share=frozen(share), survival=frozen(survival), level_db=frozen(level(pressure)),
-        impedance=frozen(1/(1j*omega*motion.charge)), sound_power=frozen(motion.power*design.drive.amplitude**2),
+        **electrical, sound_power=frozen(motion.power*design.drive.amplitude**2),
         modes=motion.basis.modes, rest=equilibrium, estimate_above=estimate_above(motion.system, equilibrium),
-        findings=equilibrium.conditions + _limits(motion), motion=motion, amplitude=design.drive.amplitude,
-        listener_distance=listener.distance)
+        findings=equilibrium.conditions + _limits(motion) + _starved(electrical), motion=motion,
+        amplitude=design.drive.amplitude, listener_distance=listener.distance)
+
+
+def _electrical(design, motion, pressure):
+    """The electrical fields of a response."""
+    v, limit = design.drive.amplitude, design.drive.current_limit
+    omega = 2*np.pi*motion.frequency
+    admittance = 1j*omega*motion.charge
+    current = admittance*v
+    reached = motion.line @ motion.system.circuit.inner
+    held = np.ones_like(omega)
+    if limit is not None:
+        held = np.minimum(1.0, limit/np.maximum(np.abs(current), 1e-300))
+    starved, limited = np.abs(reached) < np.sqrt(0.5), held < 1
+    return dict(
+        impedance=frozen(1/admittance), current=frozen(current), electrode_voltage=frozen(reached*v),
+        apparent_power=frozen(v*np.abs(current)/2), dissipated_power=frozen(v*current.real/2),
+        limited_level_db=frozen(level(pressure*held)),
+        charging_corner=float(motion.frequency[np.argmax(starved)]) if starved.any() else None,
+        current_limited_above=float(motion.frequency[np.argmax(limited)]) if limited.any() else None)
+
+
+def _starved(electrical):
+    """Findings about a source and electrodes that do not bring the voltage to the film."""
+    corner, limited = electrical["charging_corner"], electrical["current_limited_above"]
+    told = []
+    if corner is not None:
+        told.append(Finding("charging", f"From {corner:.3g} Hz less than 71 % of the voltage reaches the electrodes' inner "
+                            "edge: lower the sheet or source resistance.", "response", value=corner))
+    if limited is not None:
+        told.append(Finding("current", f"From {limited:.3g} Hz the film asks for more current than the source's limit.",
+                            "response", value=limited))
+    return tuple(told)
 
 
 def level(pressure):

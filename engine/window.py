@@ -1,12 +1,12 @@
 """The voltage window: what the rest state and the modes do as the bias rises, and the walls it must stay between."""
 
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 from itertools import islice
 
 import numpy as np
 import scipy.linalg
 
-from engine import air, linear, radiation, rear, source, statics
+from engine import air, radiation, rear, source, statics
 from engine import film as flm
 from engine.branch import arc, follow, is_stable, march
 from engine.statics import extremes, frozen, peak_voltage
@@ -14,6 +14,7 @@ from engine.statics import extremes, frozen, peak_voltage
 HIGHEST_BIAS = 20e3           # V, the bound of the bias
 N_BIAS, N_MODES = 60, 8
 N_BEYOND = 14                 # points drawn past a turning point
+LAST_TENSION = 2e-3           # of the unbiased one: what the last stable state of a flat film has left
 N_POLYNOMIALS = 32            # of the air's mass: enough for the lowest modes
 
 
@@ -31,6 +32,8 @@ class VoltageWindow:
     peak_field: np.ndarray       # (n_bias,) V/m
     least_stress: np.ndarray     # (n_bias,) Pa
     capacitance: np.ndarray      # (n_bias,) F
+    field: np.ndarray            # (n_bias, n_points) V/m, at the mesh's points
+    area: np.ndarray             # (n_bias, n_points) m2, of deformed film at them
     frequency: np.ndarray        # (n_bias, n_modes) Hz, in air, rear included
     slack_voltage: float | None          # where the least principal stress falls to zero
     pull_in_voltage: float | None        # where the stable branch ends
@@ -52,6 +55,8 @@ def voltage_window(design, n_bias=N_BIAS, n_modes=N_MODES):
     path = [(q, K, 0.0, None), *march(film, q, K, 0.0, HIGHEST_BIAS)]
     pull_in = path[-1][3]
     slack = _crossing(film, path, lambda q, V: extremes(film, q, V)[0][0], 0.0)
+    if slack is None and pull_in is not None and _least(film, path[-1]) < LAST_TENSION*_least(film, path[0]):
+        slack = pull_in        # a flat film loses its tension and its stability together
     breakdown = _crossing(film, path, lambda q, V: -extremes(film, q, V)[1][0], -design.film.breakdown_field)
     walls = [v for v in (slack, breakdown) if v is not None]
     wanted = max(1.25*peak_voltage(design.drive), 1.15*min(walls, default=0.0), 100.0)
@@ -61,6 +66,10 @@ def voltage_window(design, n_bias=N_BIAS, n_modes=N_MODES):
         q, K, V, _ = points[-1]
         points += [(q, K, V, None) for q, V, K in islice(arc(film, q, K, V), N_BEYOND)]
     return _collect(design, film, points, n_modes, n_bias, slack, pull_in, breakdown)
+
+
+def _least(film, point):
+    return extremes(film, point[0], point[2])[0][0]
 
 
 def _stable_points(film, path, voltages):
@@ -105,6 +114,9 @@ def _crossing(film, path, value, level):
 def _collect(design, film, points, n_modes, n_bias, slack, pull_in, breakdown):
     gas = air.properties(design.air.temperature, design.air.pressure, design.air.relative_humidity)
     behind = rear.from_design(design, gas)
+    fields = np.array([flm.cauchy_stress(film, q, V)[2].ravel() for q, _, V, _ in points])
+    strains = [flm.strain(film, q) for q, *_ in points]
+    areas = np.array([(film.area*np.sqrt(e.A*e.B)).ravel() for e in strains])
     extreme = [extremes(film, q, V) for q, _, V, _ in points]
     return VoltageWindow(
         bias=frozen(np.array([V for _, _, V, _ in points])),
@@ -113,6 +125,7 @@ def _collect(design, film, points, n_modes, n_bias, slack, pull_in, breakdown):
         peak_field=frozen(np.array([field for _, (field, _) in extreme])),
         least_stress=frozen(np.array([stress for (stress, _), _ in extreme])),
         capacitance=frozen(np.array([flm.capacitance(film, q) for q, *_ in points])),
+        field=frozen(fields), area=frozen(areas),
         frequency=frozen(np.array([_frequencies(design, film, q, K, gas, behind, n_modes) for q, K, _, _ in points])),
         slack_voltage=slack, pull_in_voltage=pull_in, breakdown_voltage=breakdown)
 

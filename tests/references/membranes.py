@@ -130,3 +130,19 @@ FLAT_TENSION = (
     (1.5, 0.3, 0.2372085048, 0.4054260021),
     (2.0, 0.1, 0.5843750000, 0.2460937500),
 )
+
+# Pull-in of an ideal neo-Hookean dielectric under equibiaxial dead load: nominal stress/mu, critical stretch,
+# phi_c/H sqrt(eps/mu). Zhao & Suo 2007, Appl. Phys. Lett. 91:061921; Koh et al. 2011, J. Polym. Sci. B 49:504.
+DEAD_LOAD_PULL_IN = (
+    (0.0, 1.25992104989, 0.687364818499),
+    (0.5, 1.426700235, 0.5107394875),
+    (1.0, 1.746300436, 0.3585747898),
+    (2.0, 3.016028137, 0.1920621124),
+)
+
+# Voltage-stretch curve of a Gent film, equibiaxial, no load: J_m, stretch and phi/H sqrt(eps/mu) at the maximum, then at
+# the minimum that follows. Zhao & Suo 2010, Phys. Rev. Lett. 104:178302.
+GENT_SNAP = (
+    (50.0, 1.267981003, 0.6914332180, 3.639074234, 0.3773178698),
+    (100.0, 1.263804444, 0.6893632220, 5.074259959, 0.2746005535),
+)
