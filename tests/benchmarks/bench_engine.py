@@ -54,5 +54,20 @@ def main():
                   f"{0.3:8.2f}   {unit*1e3:.1f}")
 
 
+def window():
+    """Voltage window of the medium sample: 60 voltages, 8 modes."""
+    rng = np.random.default_rng(21)
+    matrix = rng.standard_normal((400, 400))
+    matrix = matrix + matrix.T
+    design = engine.load(SAMPLES/"bench-back.toml")
+    with threadpool_limits(1):
+        full, reference = [], []
+        for _ in range(CALLS):
+            full.append(seconds(engine.voltage_window, random_change(design, rng)))
+            reference.append(seconds(scipy.linalg.eigh, matrix))
+    print(f"{'voltage window':18}{statistics.median(full)/statistics.median(reference):7.2f}{8.0:8.2f}")
+
+
 if __name__ == "__main__":
     main()
+    window()
