@@ -14,7 +14,6 @@ import numpy as np
 import scipy.linalg
 
 from engine import film as flm
-from engine.mesh import reference_derivative
 
 LINE_FREQUENCIES = 9         # between the ends of the band, at which the line's own answer is in the expansion
 KEPT = 1e-8                  # of the largest: functions below it are left out
@@ -75,7 +74,7 @@ def _line(film, q, voltage):
 def _conductance(film, q, resistance):
     """Y (n_nodes, n_nodes) S of a sheet of the given resistance per square on the deformed meridian."""
     e = flm.strain(film, q)
-    D = reference_derivative(film.mesh.order)/film.mesh.half_length[:, None, None]
+    D = film.mesh.derivative_matrix
     weight = 2*np.pi*e.r*film.mesh.weight/(resistance*np.sqrt(e.A))
     blocks = D.transpose(0, 2, 1) @ (weight[..., None]*D)
     Y = np.zeros((film.mesh.n_nodes,)*2)

@@ -10,7 +10,7 @@ from functools import cached_property
 import numpy as np
 
 from engine import material
-from engine.mesh import Mesh, reference_derivative
+from engine.mesh import Mesh
 
 VACUUM_PERMITTIVITY = 8.8541878128e-12      # F/m, CODATA 2018
 
@@ -49,7 +49,7 @@ class Film:
     @cached_property
     def area(self):
         """(n_elements, order+1) m2: 2 pi r0 dr0 at the nodes."""
-        return 2*np.pi*self.mesh.local(self.mesh.radius)*self.mesh.weight
+        return 2*np.pi*self.mesh.local_radius*self.mesh.weight
 
     @cached_property
     def mass(self):
@@ -109,7 +109,7 @@ def strain(film, q):
     radial, axial = expand(film, q, at_rest=True)
     dr, dz = film.mesh.derivative(radial), film.mesh.derivative(axial)
     r = film.mesh.local(radial)
-    return Strain(r, dr, dz, dr**2 + dz**2, (r/film.mesh.local(film.mesh.radius))**2)
+    return Strain(r, dr, dz, dr**2 + dz**2, (r/film.mesh.local_radius)**2)
 
 
 def surface_energy(film, A, B, voltage, electrodes=True):
@@ -129,12 +129,12 @@ def surface_energy(film, A, B, voltage, electrodes=True):
 def strain_rows(film, e):
     """(n_elements, 2(order+1), 2(order+1)): rows delta A of all points then delta B, columns r then z."""
     n, p1 = film.mesh.n_elements, film.mesh.order + 1
-    D = reference_derivative(film.mesh.order)/film.mesh.half_length[:, None, None]
+    D = film.mesh.derivative_matrix
     rows = np.zeros((n, 2*p1, 2*p1))
     rows[:, :p1, :p1] = 2*e.dr[..., None]*D
     rows[:, :p1, p1:] = 2*e.dz[..., None]*D
     i = np.arange(p1)
-    rows[:, p1 + i, i] = 2*e.r/film.mesh.local(film.mesh.radius)**2
+    rows[:, p1 + i, i] = 2*e.r/film.mesh.local_radius**2
     return rows, D
 
 
@@ -191,7 +191,7 @@ def linearise(film, q, voltage):
     K[:, :p1, :p1] += stretching
     K[:, p1:, p1:] += stretching
     i = np.arange(p1)
-    K[:, i, i] += 2*film.area*wB/film.mesh.local(film.mesh.radius)**2      # w_B delta2 B
+    K[:, i, i] += 2*film.area*wB/film.mesh.local_radius**2      # w_B delta2 B
     tangent = assemble_matrix(film, K)
     tangent[0, 0] += film.spring_rate
     spring = film.spring_rate*(film.spring_free_height - q[0])**2/2
@@ -218,7 +218,7 @@ def dissipation(film, q):
 def swept_volume(film, q):
     """S = -integral of pi r^2 z' dr0 in m3, the centre's part included, and s = dS/dq (n_dof,) in m2."""
     e = strain(film, q)
-    D = reference_derivative(film.mesh.order)/film.mesh.half_length[:, None, None]
+    D = film.mesh.derivative_matrix
     w = film.mesh.weight
     radial = -2*np.pi*w*e.r*e.dz
     axial = -(np.pi*w*e.r**2)[:, None, :] @ D

@@ -50,7 +50,7 @@ def excursion(design, found: Response):
     e = flm.strain(film, m.system.state)
     radial, axial = flm.expand(film, m.basis.shapes)
     strains = (2*(e.dr*film.mesh.derivative(radial) + e.dz*film.mesh.derivative(axial)),
-               2*e.r*film.mesh.local(radial)/film.mesh.local(film.mesh.radius)**2)
+               2*e.r*film.mesh.local(radial)/film.mesh.local_radius**2)
     unit = m.unit*found.amplitude
     dA, dB = (unit @ part.reshape(len(part), -1) for part in strains)
     v = (m.line*found.amplitude) @ m.system.circuit.functions[:, film.mesh.nodes].reshape(m.line.shape[1], -1)

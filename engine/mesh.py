@@ -1,7 +1,7 @@
 """Spectral elements on the meridian: Gauss-Lobatto nodes, derivatives, quadrature, interpolation."""
 
 from dataclasses import dataclass
-from functools import lru_cache
+from functools import cached_property, lru_cache
 
 import numpy as np
 from numpy.polynomial import legendre
@@ -81,6 +81,16 @@ class Mesh:
     nodes: np.ndarray
     half_length: np.ndarray
     weight: np.ndarray
+
+    @cached_property
+    def local_radius(self):
+        """(n_elements, order+1) m: the nodes' reference radii, element by element."""
+        return self.radius[self.nodes]
+
+    @cached_property
+    def derivative_matrix(self):
+        """(n_elements, order+1, order+1) 1/m: from an element's nodal values to their slopes."""
+        return reference_derivative(self.order)/self.half_length[:, None, None]
 
     @property
     def n_nodes(self):

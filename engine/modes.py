@@ -131,7 +131,9 @@ def _vacuum_frequencies(system, n):
     root = 1/np.sqrt(system.mass)
     K = system.stiffness*root[:, None]*root
     width = 2*system.film.mesh.order + 2
-    band = np.array([np.append(np.zeros(i), np.diagonal(K, i)) for i in range(width - 1, -1, -1)])
+    band = np.zeros((width, len(K)))
+    for i in range(width):
+        band[width - 1 - i, i:] = np.diagonal(K, i)
     squares = scipy.linalg.eig_banded(band, eigvals_only=True, check_finite=False)[:n]
     return np.sqrt(np.maximum(squares, 0))/(2*np.pi)
 
