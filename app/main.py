@@ -15,6 +15,14 @@ from app.session import visit
 PRODUCT = "Elastovox"
 INPUT_DELAY = 20           # ms the server waits for more input before it acts; Panel's own 50 can be felt
 HEADER_PX = 44
+LOST = ("The connection is lost: what you change now is not computed. Save is not possible either; start the program "
+        "again and reload this page.")
+# a cone of film in section, 32 x 32, as the browser's tab shows it
+ICON = ("data:image/png;base64,"
+        "iVBORw0KGgoAAAANSUhEUgAAACAAAAAgCAQAAADZc7J/AAAAfUlEQVR42u1UQQ7AIAjjZ3yFn/A0n+YuzkmCWliW7GB7I0hL"
+        "rBIdHHwFYSkOGR9QpHrE9euE+kof9tDb2antPYi21uJWa0o/4GGu5Dub6yvuDd4U8LDec8gHJ/RNQjShbz3YqTeBmx5S2U5R"
+        "LO/Pml0umvbdAI2+1fN7/gEXqAULHUKSMsUAAAAASUVORK5CYII=")
+LOADER_CSS = "#loader:not(.error) { background: none !important; pointer-events: none; } #loader .spinner { opacity: 0.4; }"
 FRAME = {
     "& .header": {"backgroundColor": "background.default", "color": "text.primary", "boxShadow": "none",
                   "borderBottom": "1px solid", "borderColor": "divider", "backgroundImage": "none"},
@@ -36,14 +44,14 @@ def page(design):
     -------
     panel_material_ui.Page
     """
-    pn.extension(notifications=True, exception_handler=failed)
+    pn.extension(notifications=True, exception_handler=failed, disconnect_notification=LOST)
     lower_input_delay()
     session = visit(design, pn.state.curdoc)
     open_address(session.state)
     header = Header(session, PRODUCT)
     response = ResponsePage(session, dark=pn.config.theme == "dark")
     frame = pmui.Page(header=[header], main=[response.view], theme_config=colours(), sx=FRAME, busy_indicator=None,
-                      meta_title=PRODUCT, sizing_mode="stretch_both")
+                      title="", meta_title=PRODUCT, favicon=ICON, raw_css=[LOADER_CSS], sizing_mode="stretch_both")
     frame.param.watch(lambda event: response.set_dark(event.new), "dark_theme")
     session.start()
     pn.state.onload(session.connected)

@@ -8,7 +8,7 @@ import numpy as np
 import pytest
 
 import engine
-from app.state import DEFAULT_BAND
+from app.state import DEFAULT_BAND, DesignState
 from app.values import from_slider, value_text
 from engine.design import Design, field_of
 from engine.designfile import dumps, loads
@@ -199,3 +199,17 @@ def test_the_band(visit):
     visit.page.locator(".field-band input").fill("20")
     visit.page.locator(".field-band input").press("Enter")
     visit.page.locator(".field-band .message").filter(has_text="two frequencies").wait_for()
+
+
+def test_a_fault_of_the_program_is_told_and_the_page_lives_on(visit, monkeypatch):
+    """In the computation and in a callback: words on the page, never a traceback."""
+    with monkeypatch.context() as broken:
+        broken.setattr(engine, "overview", lambda design, band: 1 / 0)
+        visit.type("film.prestretch", "1.91")
+        visit.message("film.prestretch").filter(has_text="a reason of the program's own").wait_for()
+        broken.setattr(DesignState, "undo", lambda state: [][0])
+        visit.button("undo").click()
+        notice = visit.page.get_by_text("The program failed at this (IndexError)")
+        notice.wait_for()
+    visit.changed(lambda: visit.type("film.prestretch", "1.3"))
+    assert_shows(visit, Design().with_values({"film.prestretch": 1.3}))
