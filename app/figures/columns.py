@@ -18,7 +18,7 @@ SHAPE_POINTS = 201      # of a drawn shape, evenly spaced
 class Columns:
     """One dict of columns per source; ``still`` is what does not depend on a mode or a frequency (one row)."""
 
-    level: dict     # x (log10 Hz), frequency, level_db, survival
+    level: dict     # x (log10 Hz), frequency, level_db, survival, made (Pa: sum of all contributions' magnitudes)
     rows: dict      # re, im (n_freq * n_rows): contribution of each row of the share map, Pa, frequency leading
     motion: dict    # re, im (n_freq * n_moving): amplitude of each moving mode, m
     shapes: dict    # radial, axial (n_moving * n_points)
@@ -45,7 +45,8 @@ def columns(overview):
     placed = {"x": [low], "y": [0], "dw": [high - low]}
     return Columns(
         level={"x": np.log10(response.frequency).astype(np.float32), "frequency": _short(response.frequency),
-               "level_db": _short(response.level_db), "survival": _short(response.survival)},
+               "level_db": _short(response.level_db), "survival": _short(response.survival),
+               "made": _short(np.abs(response.contribution).sum(axis=1))},
         rows=_two(by_row), motion=_two(response.displacement[:, moving]),
         shapes={"radial": radial, "axial": axial}, nodes={"radius": radius, "height": height},
         gallery=_gallery(overview, shown, moving),

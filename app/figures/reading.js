@@ -12,7 +12,8 @@ const read = (m) => {
     shape: g.shape[i],
   }))
   return {
-    ...one, n, modes, frequency: level.frequency, x: level.x, level: level.level_db, re: m.rows.data.re, im: m.rows.data.im,
+    ...one, n, modes, frequency: level.frequency, x: level.x, level: level.level_db,
+    made: level.made, re: m.rows.data.re, im: m.rows.data.im,
     n_moving: m.moving.data.row.length, motion_re: m.motion.data.re, motion_im: m.motion.data.im,
     radial: m.shapes.data.radial, axial: m.shapes.data.axial, radius: m.nodes.data.radius, height: m.nodes.data.height,
   }
@@ -43,7 +44,7 @@ const pressuresAt = (d, f) => {
   const at = bracket(d, f)
   const re = blend(d.re, d.n_rows, at), im = blend(d.im, d.n_rows, at)
   const size = re.map((r, k) => Math.hypot(r, im[k]))
-  const made = size.reduce((a, b) => a + b, 0)
+  const made = blend(d.made, 1, at)[0]               // of every mode: the row of others is already a sum
   const total = [re.reduce((a, b) => a + b, 0), im.reduce((a, b) => a + b, 0)]
   const heard = Math.hypot(...total)
   const level = (1 - at[2]) * d.level[at[0]] + at[2] * d.level[at[1]]

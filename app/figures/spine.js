@@ -8,7 +8,7 @@ const drawRows = (page) => {
   if (!now || !(H > 0)) return
   const n = now.n_rows, high = H / n
   const size = Math.min(ROW_TEXT_MOST, Math.max(ROW_TEXT, high))
-  m.row_text.setv({ text_font_size: `${size}px` })
+  if (m.row_text.text_font_size.value !== `${size}px`) m.row_text.text_font_size = { value: `${size}px` }
   const chosen = sameMode(now, page.chosen)
   const middle = (row) => n - row - 0.5
   const label = (row) => row < now.n_shown ? bareHertz(now.modes[row].frequency) : row === n - 1 ? "residual" : `${now.n_others} others`

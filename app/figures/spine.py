@@ -13,14 +13,16 @@ LEVEL_BOTTOM, SHARE_BOTTOM = 20, 38
 MENU, SCALE = 26, 84                 # px: kept free for the save menu, length of the colour scale
 MOST_DB, LEAST_DB = 80, 40           # height of the level axis
 
+LEVEL = {name: [] for name in ("x", "frequency", "level_db", "survival", "made")}
+
 
 class Spine:
     """Both plots; ``level`` and ``share`` are the Bokeh plots."""
 
     def __init__(self, inks):
         self.x_range = span(math.log10(30), math.log10(4000))
-        self.level_source = source("level", x=[], frequency=[], level_db=[], survival=[])
-        self.held_source = source("held_level", x=[], frequency=[], level_db=[], survival=[])
+        self.level_source = source("level", **LEVEL)
+        self.held_source = source("held_level", **LEVEL)
         self.share_source = source("share", image=[], x=[], y=[], dw=[], dh=[])
         self.row_words = source("share_rows", x=[], y=[], text=[], role=[], style=[])
         self.row_ticks = source("share_ticks", x0=[], y0=[], x1=[], y1=[], role=[])
@@ -74,7 +76,7 @@ class Spine:
         ticks = Segment(x0="x0", y0="y0", x1="x1", y1="y1", line_width=1.5, line_color=inks.by_column())
         plot.add_glyph(self.row_ticks, ticks)
         self.row_text = text(plot, inks, self.row_words, color=None, text_align="right", text_baseline="middle",
-                             x_offset=-8, text_font_style={"field": "style"}).glyph
+                             x_offset=-8, text_font_style={"field": "style"}, syncable=False).glyph
         text(plot, inks, self.share_labels, text_align="center", text_baseline="alphabetic", y_offset=16)
         text(plot, inks, self.axis_words, text_align="right", text_baseline="alphabetic", y_offset=29)
         text(plot, inks, self.share_words, size=12, color="ink", text_align="left", x_offset=-LEFT + 8, y_offset=-10)
@@ -103,8 +105,7 @@ class Spine:
 
     def hold(self, columns):
         """Draw another design's level in grey; None: nothing."""
-        empty = {name: [] for name in ("x", "frequency", "level_db", "survival")}
-        self.held_source.data = empty if columns is None else columns.level
+        self.held_source.data = LEVEL if columns is None else columns.level
         self._name_held()
 
     def _name_held(self):
