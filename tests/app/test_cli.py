@@ -5,6 +5,7 @@ import re
 import signal
 import subprocess
 import sys
+import tomllib
 import urllib.request
 from pathlib import Path
 
@@ -81,3 +82,16 @@ def test_help_needs_no_numerics():
     ended = subprocess.run([sys.executable, "-c", code], cwd=ROOT, capture_output=True, text=True, timeout=60,
                            check=True)
     assert ended.stdout.endswith("set()\n")
+
+
+def test_every_file_beside_the_code_is_packaged():
+    """A wheel holds what a checkout holds: styles, browser code and samples too."""
+    settings = tomllib.loads((ROOT / "pyproject.toml").read_text(encoding="utf-8"))["tool"]["setuptools"]
+    for package in settings["packages"]:
+        folder = ROOT / package.replace(".", "/")
+        packaged = {path for pattern in settings["package-data"].get(package, []) for path in folder.glob(pattern)}
+        beside = {path for path in folder.iterdir() if path.is_file() and path.suffix not in (".py", ".pyc")}
+        assert beside - packaged == set()
+    for name in ("app", "engine"):
+        held = {".".join(path.relative_to(ROOT).parent.parts) for path in (ROOT / name).rglob("*.py")}
+        assert held <= set(settings["packages"])
