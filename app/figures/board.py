@@ -35,7 +35,7 @@ class Board:
 
     def __init__(self, dark=False):
         self._inks = Inks(theme.palette(dark))
-        self._style = InlineStyleSheet(css=(HERE / "board.css").read_text(encoding="utf-8"))
+        self._style = InlineStyleSheet(css=(HERE.parent / "board.css").read_text(encoding="utf-8"))
         self._spine, self._phasor = Spine(self._inks), Phasor(self._inks)
         self._section, self._gallery = Section(self._inks), Gallery(self._inks)
         self._plots = {"level": self._spine.level, "share": self._spine.share, "phasor": self._phasor.plot,
