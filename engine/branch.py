@@ -128,7 +128,7 @@ def march(film, q, K, start, stop):
             yield q, K, voltage, None
         else:
             step /= 3
-            if step < 2e-4*(s + step):         # 1e-4 in voltage
+            if step < 6e-4*(s + step):         # 3e-4 in voltage
                 end = float(np.sqrt(2*s))
                 yield q, K, end, end
                 return

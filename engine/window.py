@@ -15,7 +15,7 @@ HIGHEST_BIAS = 20e3           # V, the bound of the bias
 N_BIAS, N_MODES = 60, 8
 N_BEYOND = 14                 # points drawn past a turning point
 LAST_TENSION = 2e-3           # of the unbiased one: what the last stable state of a flat film has left
-N_POLYNOMIALS = 32            # of the air's mass: enough for the lowest modes
+N_POLYNOMIALS = 24            # of the air's mass: enough for the lowest modes
 
 
 @dataclass(frozen=True)
@@ -88,7 +88,7 @@ def _stable_points(film, path, voltages):
 
 
 def _crossing(film, path, value, level):
-    """Voltage, to 1e-4, at which value(state, voltage) falls to level on the stable path; None where it does not."""
+    """Voltage, to 4e-4, at which value(state, voltage) falls to level on the stable path; None where it does not."""
     values = [value(point[0], point[2]) - level for point in path]
     fallen = next((i for i, v in enumerate(values) if v <= 0), None)
     if fallen is None:
@@ -98,7 +98,7 @@ def _crossing(film, path, value, level):
     (q, K, low, _), high = path[fallen - 1], path[fallen][2]
     f_low, f_high = values[fallen - 1], values[fallen]
     for _ in range(60):
-        if high - low < 1e-4*high:
+        if high - low < 4e-4*high:
             break
         share = np.clip(f_low/(f_low - f_high), 0.02, 0.98)
         middle = np.sqrt(low**2 + share*(high**2 - low**2))
@@ -135,7 +135,7 @@ def _frequencies(design, film, q, K, gas, behind, n_modes):
     b = film.mesh.edges[-1]
     M = np.diag(film.mass)
     if design.air.load:
-        emitter = source.sample(film, q, film.mesh.order + 12)
+        emitter = source.sample(film, q, film.mesh.order + 6)
         rows = radiation.projection_matrix(emitter.radius/b, N_POLYNOMIALS)/(2*np.pi*b**2)
         c = source.flow_projection(emitter, rows)
         M += behind.faces*gas.density*b**3*(c.T @ (radiation.static_mass_matrix(N_POLYNOMIALS) @ c))

@@ -1,5 +1,6 @@
 // Section to scale at rest, moving; millimetres, both sides mirrored.
-const PERIOD_MS = 1600, FRAME_MS = 30      // of one drawn period; between frames
+const PERIOD_MS = 1600, FRAME_MS = 40      // of one drawn period; between frames
+const BUSY_MS = 250                        // after new data only those paint it: a drag needs the time
 const ROOM = 0.14, STEEPEST = 0.7          // drawn motion over frame radius; drawn strain along the film, below folding
 
 const mirror = (radius, height, x, y) => {
@@ -126,7 +127,7 @@ const animate = (page) => {
     if (time - last >= FRAME_MS) {
       page.phase = (page.phase + 2 * Math.PI * Math.min(time - last, 100) / PERIOD_MS) % (2 * Math.PI)
       last = time
-      if (onScreen(page, page.m.section_plot)) paintMotion(page)
+      if (time - page.shown > BUSY_MS && onScreen(page.m.section_plot)) paintMotion(page)
     }
     requestAnimationFrame(step)
   }

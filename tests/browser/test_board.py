@@ -170,6 +170,14 @@ def test_the_animation_runs_pauses_and_rests_for_those_who_ask(visitor):
     visit.wait("deep('[data-word=pause]')[0]?.textContent === 'play'")
 
 
+def test_bokeh_still_has_the_copies_that_are_put_to_rest(visit):
+    counts = visit.evaluate("""[Bokeh.documents[0].get_model_by_name('level_plot').elastovox.rested,
+        ...['level', 'share', 'phasor', 'section', 'gallery'].map((name) => Bokeh.index.find_one(
+            Bokeh.documents[0].get_model_by_name(name + '_plot')).renderer_views)
+        .map((views) => [...views.values()].filter((view) => view.glyph).length)]""")
+    assert counts[0] == 4 * sum(counts[1:]) > 0
+
+
 def test_choosing_a_mode_lights_its_row_its_phasor_and_its_motion(visit, response):
     for key in ("Escape", "ArrowRight", "ArrowRight"):
         press(visit, "gallery", key)
