@@ -16,7 +16,7 @@ const drawRows = (page) => {
   const matter = (row) => (row === chosen?.row ? 2 : 0) +
     (now.modes[row]?.kind === "pumping" || row === n - 1 ? 1 : now.modes[row]?.share ?? 0)
   const order = [...Array(n).keys()].sort((a, b) => matter(b) - matter(a)), kept = []
-  for (const row of order) if (kept.every((k) => Math.abs(k - row) * high >= size * 0.86)) kept.push(row)
+  for (const row of order) if (kept.every((k) => Math.abs(k - row) * high >= size * 0.92)) kept.push(row)
   const role = (row) => row === chosen?.row ? "accent" : row < now.n_shown ? KIND_ROLE[now.modes[row].kind] : "muted"
   put(m.share_rows, {
     x: kept.map(() => plot.x_range.start), y: kept.map(middle), text: kept.map(label), role: kept.map(role),
@@ -24,7 +24,7 @@ const drawRows = (page) => {
   })
   // The colour scale between its two words, above the map's right end.
   const right = plot.x_range.end, wide = (right - plot.x_range.start) / plot.inner_width
-  put(m.share_legend, { image: m.share_legend.data.image, x: [right - 142 * wide], dw: [84 * wide], y: [n + 12 / high],
+  put(m.share_legend, { image: m.share_legend.data.image, x: [right - 142 * wide], dw: [84 * wide], y: [n + 11 / high],
                         dh: [9 / high] })
   // A tick in each row at the mode's own frequency; grey where the held design has it.
   const ticks = { x0: [], y0: [], x1: [], y1: [], role: [] }

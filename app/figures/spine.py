@@ -8,8 +8,8 @@ from bokeh.models import BoxAnnotation, Image, Line, LinearColorMapper, Segment,
 from app import theme
 from app.figures.canvas import bare_plot, gridlines, source, span, text
 
-LEFT, RIGHT, TOP = 62, 14, 26        # px of the margins, the same for both plots
-LEVEL_BOTTOM, SHARE_BOTTOM = 20, 38
+LEFT, RIGHT, TOP = 62, 14, 24        # px of the margins, the same for both plots
+LEVEL_BOTTOM, SHARE_BOTTOM = 18, 32
 MENU, SCALE = 26, 84                 # px: kept free for the save menu, length of the colour scale
 MOST_DB, LEAST_DB = 80, 40           # height of the level axis
 
@@ -49,7 +49,7 @@ class Spine:
         plot.add_glyph(self.held_source, held)
         plot.add_glyph(self.level_source, line)
         text(plot, inks, self.level_labels, text_align="right", text_baseline="middle", x_offset=-8)
-        text(plot, inks, self.level_ticks, text_align="center", text_baseline="alphabetic", y_offset=14)
+        text(plot, inks, self.level_ticks, text_align="center", text_baseline="alphabetic", y_offset=13)
         text(plot, inks, self.level_words, size=12, color="ink", text_align="left", x_offset=-LEFT + 8, y_offset=-10)
         text(plot, inks, self.held_words, text_align="left", x_offset=6, y_offset=15)
         text(plot, inks, self.estimate_words, text_align={"field": "align"}, x_offset={"field": "shift"}, y_offset=-5)
@@ -77,8 +77,8 @@ class Spine:
         plot.add_glyph(self.row_ticks, ticks)
         self.row_text = text(plot, inks, self.row_words, color=None, text_align="right", text_baseline="middle",
                              x_offset=-8, text_font_style={"field": "style"}, syncable=False).glyph
-        text(plot, inks, self.share_labels, text_align="center", text_baseline="alphabetic", y_offset=16)
-        text(plot, inks, self.axis_words, text_align="right", text_baseline="alphabetic", y_offset=29)
+        text(plot, inks, self.share_labels, text_align="center", text_baseline="alphabetic", y_offset=12)
+        text(plot, inks, self.axis_words, text_align="right", text_baseline="alphabetic", y_offset=25)
         text(plot, inks, self.share_words, size=12, color="ink", text_align="left", x_offset=-LEFT + 8, y_offset=-10)
         text(plot, inks, self.legend_words, text_align="right", x_offset={"field": "shift"}, y_offset=-10)
         plot.add_glyph(self.legend, Image(image="image", color_mapper=self.colours, **image), level="annotation")
