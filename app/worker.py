@@ -3,6 +3,7 @@
 import asyncio
 import functools
 import logging
+import sys
 import threading
 from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass
@@ -13,6 +14,7 @@ import engine
 from engine.errors import InvalidDesign, NoRestState, NotConverged
 
 N_THREADS = 2            # one visitor dragging must not make another wait for a whole computation
+SWITCH_INTERVAL = 1e-3   # s a computing thread may keep the interpreter while the event loop waits for it
 REMEMBERED = 24          # overviews kept for the whole process: undo, redo and a sample's first sight cost nothing
 KINDS = {InvalidDesign: "invalid", NoRestState: "no rest state", NotConverged: "not converged"}
 
@@ -42,6 +44,7 @@ class Worker:
 
     def __init__(self, n_threads=N_THREADS):
         pin_blas()
+        sys.setswitchinterval(SWITCH_INTERVAL)
         self.executor = ThreadPoolExecutor(n_threads, thread_name_prefix="compute")
         self.overview = functools.lru_cache(maxsize=REMEMBERED)(_overview)
 

@@ -116,6 +116,7 @@ def main():
         print(f"burst of {N_BURST} inputs at 60 a second: {burst['repaints']} repaints, lag {burst['lag']:.0f} ms")
         other = opened(browser, url)
         other.evaluate(HELPERS)
+        other.evaluate("() => { window.requestAnimationFrame = () => 0 }")   # its painting would be another machine's
         beside = steps(page, "film-shear_modulus")
         other.evaluate("() => bench.drag('geometry-frame_radius')")
         busy = steps(page, "film-density")
