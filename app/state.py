@@ -42,8 +42,8 @@ def _parameter(field):
     if about["kind"] in ("number", "count"):
         bounds = tuple(display_value(field, bound) for bound in about["bounds"])
         kind = param.Number if about["kind"] == "number" else param.Integer
-        default = display_value(field, field.default)
-        return kind(default=default if kind is param.Number else int(default), softbounds=bounds, **words)
+        default = on_screen(field, field.default)
+        return kind(default=default, softbounds=bounds, allow_None=default is None, **words)
     if about["kind"] == "choice":
         return param.Selector(default=field.default, objects=list(about["choices"]), **words)
     if about["kind"] == "flag":

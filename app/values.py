@@ -15,26 +15,32 @@ from engine.fields import (
 )
 
 TYPED = re.compile(r"([+-]?(?:\d+\.?\d*|\.\d+)(?:e[+-]?\d+)?)\s*(.*)", re.IGNORECASE)
+ABSENT = ("none", "unlimited", "")   # what is typed for no limit
 LOG_STEP = 0.01              # a key press on a logarithmic slider changes the value by this ratio
 LOG_POSITIONS = 1e4          # what such a slider counts from end to end
 
 
 def on_screen(field, value):
     """The value a control shows for an SI value."""
-    if field.metadata["kind"] == "number":
+    if field.metadata["kind"] == "number" and value is not None:
         return display_value(field, value)
     return value
 
 
 def in_si(field, shown):
     """The SI value of what a control shows."""
-    if field.metadata["kind"] == "number":
+    if field.metadata["kind"] == "number" and shown is not None:
         return si_value(field, shown)
     return shown
 
 
+def may_be_absent(field):
+    """Whether a number may be None: no limit at all."""
+    return field.metadata["kind"] == "number" and field.default is None
+
+
 def typed_number(field, text):
-    """Display value of a typed number, with or without a unit ("1.3", "52 mm", "0.052 m").
+    """Display value of a typed number, with or without a unit ("1.3", "52 mm", "0.052 m"); None for "none" where allowed.
 
     Raises
     ------
@@ -42,6 +48,8 @@ def typed_number(field, text):
         If the text is no number, or its unit is not one of the field's kind.
     """
     own = UNITS[field.metadata["unit"]]
+    if may_be_absent(field) and text.strip().lower() in ABSENT:
+        return None
     match = TYPED.fullmatch(text.strip().replace("−", "-").replace(",", "."))
     if not match:
         raise ValueError(f"{text.strip()[:20]!r} is no number. Type one such as {example(field)}.")
@@ -56,6 +64,8 @@ def typed_number(field, text):
 
 def example(field):
     """A well-typed value of a field: its default."""
+    if field.default is None:
+        return f"1 {field.metadata['unit']}, or none"
     return f"{display_value(field, field.default):g} {field.metadata['unit']}".strip()
 
 
@@ -117,8 +127,10 @@ def slider_scale(field):
 
 
 def on_slider(field, shown):
-    """Place of a display value on the field's slider, within its ends."""
+    """Place of a display value on the field's slider, within its ends; the right end where there is none."""
     low, high = field.metadata["bounds"]
+    if shown is None:
+        return slider_scale(field)["end"]
     inside = min(max(in_si(field, shown), low), high)
     if field.metadata["scale"] == "log":
         return LOG_POSITIONS * slider_position(field, inside)
@@ -126,7 +138,9 @@ def on_slider(field, shown):
 
 
 def from_slider(field, place):
-    """Display value at a place of the field's slider; round in its digits."""
+    """Display value at a place of the field's slider; round in its digits. The right end may mean none."""
+    if may_be_absent(field) and place >= slider_scale(field)["end"]:
+        return None
     if field.metadata["scale"] == "log":
         position = place / LOG_POSITIONS
     else:

@@ -124,7 +124,7 @@ class Electrodes(_Group):
                                   log_from=1e3, required=False)
     sheet_resistance: float = number(0.0, "Sheet resistance", "kΩ", (0.0, 1e9), 100.0,
                                      "Resistance of a square of one electrode sheet", scale="log", log_from=100.0,
-                                     required=False, later=True)
+                                     required=False)
     zones: tuple = listing(((0.0, 1.0, 1.0),), "Zones", "Electrode rings: inner, outer edge as fractions of the film's "
                            "width, and gain", columns=("", "", ""), later=True)
 
@@ -189,9 +189,9 @@ class Drive(_Group):
                       "squared voltage follows it", required=False)
     source_resistance: float = number(0.0, "Source resistance", "kΩ", (0.0, 1e9), 100.0,
                                       "Resistance between source and film", scale="log", log_from=100.0,
-                                      required=False, later=True)
-    current_limit: float | None = number(None, "Current limit", "mA", (1e-6, 1.0), 1e-5, "Largest current the source "
-                                         "delivers, none if unlimited", scale="log", required=False, later=True)
+                                      required=False)
+    current_limit: float | None = number(None, "Current limit", "mA", (0.0, 1.0), 1e-5, "Largest current the source "
+                                         "delivers; none: unlimited", scale="log", log_from=1e-6, required=False)
 
     def _check_together(self):
         if self.law == "square-root" and self.amplitude > self.bias / 2:

@@ -2,7 +2,7 @@
 
 A design file is TOML 1.0: ``name``, an optional ``note``, and one table per group of the design. A value with a
 dimension is a text of number and unit in any unit of its dimension ("52 mm", "2.4 kV", "0.31 MPa", "90 um", "20 degC",
-"50 %"), a ratio is a plain number, a choice is a word, yes or no is ``true`` or ``false``, a missing current limit is
+"50 %"), a ratio is a plain number, a choice is a word, yes or no is ``true`` or ``false``, no current limit is
 "none". ``film.law_parameters`` is a list of numbers, ``film.relaxation`` a list of pairs ``[0.2, "15 ms"]``,
 ``electrodes.zones`` a list of ``[inner, outer, gain]``.
 

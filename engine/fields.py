@@ -64,6 +64,7 @@ UNITS = MappingProxyType({unit.symbol: unit for unit in (
     Unit("%", Decimal("1e-2"), ""),
     Unit("m", Decimal(1), "m"),
     Unit("mm", Decimal("1e-3"), "m"),
+    Unit("cm²", Decimal("1e-4"), "m²"),
     Unit("µm", Decimal("1e-6"), "m"),
     Unit("l", Decimal("1e-3"), "m³"),
     Unit("g", Decimal("1e-3"), "kg"),

@@ -205,7 +205,8 @@ FAULTS = {
     "flag": ("load = true", 'load = "yes"', ["air.load", "true or false"]),
     "pair without unit": ("relaxation = []", "relaxation = [[0.1, 5]]", ["film.relaxation", "without a unit"]),
     "triple for a pair": ("relaxation = []", 'relaxation = [[0.1, "5 s", 1]]', ["film.relaxation"]),
-    "later physics": ('current_limit = "none"', 'current_limit = "3 mA"', ["drive.current_limit", "not computed yet"]),
+    "later physics": ('static_pressure = "0 Pa"', 'static_pressure = "9 Pa"', ["rear.static_pressure", "not computed"]),
+    "unlimited in another word": ('current_limit = "none"', 'current_limit = "inf mA"', ["drive.current_limit", "not a"]),
     "name of numbers": ('name = "Bench back"', "name = 3", ["name", "quotes"])}
 
 
