@@ -8,7 +8,7 @@ the listener are positive. Inputs and results are frozen dataclasses holding rea
 from engine.design import Air, Centre, Design, Drive, Electrodes, Film, Geometry, Listener, Rear
 from engine.designfile import load, save
 from engine.errors import InvalidDesign, NoRestState, NotConverged
-from engine.limits import Excursion, Margin, breakdown_band, excursion, margins
+from engine.limits import Excursion, Judgement, LimitsView, Margin, breakdown_band, excursion, limits_view, margins
 from engine.modes import Modes, modes
 from engine.response import Response, prepare, response
 from engine.statics import Equilibrium, Finding, equilibrium
@@ -17,6 +17,7 @@ from engine.window import VoltageWindow, voltage_window
 
 __all__ = [
     "Air", "Centre", "Design", "Drive", "Electrodes", "Equilibrium", "Excursion", "Film", "Finding", "Geometry",
-    "InvalidDesign", "KeyFigures", "Listener", "Margin", "Modes", "NoRestState", "NotConverged", "Overview", "Rear",
-    "Response", "VoltageWindow", "breakdown_band", "energy_share", "equilibrium", "excursion", "key_figures",
-    "load", "margins", "modes", "overview", "prepare", "response", "save", "voltage_window"]
+    "InvalidDesign", "Judgement", "KeyFigures", "LimitsView", "Listener", "Margin", "Modes", "NoRestState",
+    "NotConverged", "Overview", "Rear", "Response", "VoltageWindow", "breakdown_band", "energy_share", "equilibrium",
+    "excursion", "key_figures", "limits_view", "load", "margins", "modes", "overview", "prepare", "response",
+    "save", "voltage_window"]

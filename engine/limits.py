@@ -1,12 +1,18 @@
 """What a design may be driven to: field, stress and stroke under the signal, margins to the walls, breakdown as a chance."""
 
-from dataclasses import dataclass
+from dataclasses import dataclass, fields
+from typing import ClassVar
 
 import numpy as np
 
 from engine import film as flm
+from engine import statics
+from engine.checks import checked
+from engine.design import Design
+from engine.fields import number
 from engine.response import Response, response
 from engine.statics import Finding, frozen, peak_voltage
+from engine.window import VoltageWindow, voltage_window
 
 LINEAR_STROKE = 0.2           # part of the cone's height, beyond which the linear result is not trusted
 CHARGE_LIMIT = 45e-6          # C, IEC 61010-1 cl. 6.3, up to 15 kV (from memory)
@@ -37,6 +43,89 @@ class Margin:
     largest_bias: float | None         # at the design's amplitude
     level_change_db: float | None      # of the level, at the largest amplitude
     level_db: float | None             # mean in the band at the largest amplitude
+
+
+@dataclass(frozen=True)
+class Judgement:
+    """What a person judges the walls by; it belongs to the judge, not to the design. InvalidDesign where out of bounds."""
+
+    group: ClassVar[str] = "judgement"
+    safety: float = number(1.2, "Safety factor", "", (1.0, 5.0), 0.05, "By how much each wall's voltage is divided "
+                           "before the drive is held against it")
+    modulus: float = number(20.0, "Weibull modulus", "", (2.0, 100.0), 1.0, "How little breakdown scatters from film to "
+                            "film: 5 widely, 50 hardly", scale="log")
+    reference_area: float = number(1e-4, "Reference area", "cm²", (1e-7, 1.0), 1e-5, "Area of the films whose breakdown "
+                                   "field was measured; 63 % of them fail at it", scale="log")
+
+    def __post_init__(self):
+        for field in fields(self):
+            object.__setattr__(self, field.name, checked(field, f"{self.group}.{field.name}", getattr(self, field.name)))
+
+
+@dataclass(frozen=True)
+class State:
+    """Peak field (V/m), least principal stress (Pa) and stroke (m) in one state; frequency (Hz) of each if dynamic."""
+
+    peak_field: float
+    least_stress: float
+    stroke: float | None         # None: the film has pulled in
+    frequency: tuple | None = None
+
+
+@dataclass(frozen=True)
+class LimitsView:
+    """Everything the page of the limits shows of one design."""
+
+    design: Design
+    response: Response
+    excursion: Excursion
+    window: VoltageWindow
+    judgement: Judgement
+    swing: tuple                 # (lowest, highest) V of the drive
+    margins: tuple               # of Margin: slack, pull-in, breakdown
+    breakdown_band: tuple        # V at which 5, 50 and 95 % of films have broken down, None: beyond the window
+    at_rest: State
+    at_peak: State               # of a drive slow against the resonances
+    at_worst: State              # of the linear response, each at its own worst frequency
+    charge: float                # C, on the film at the peak of the drive
+    energy: float                # J
+    beyond_limit: bool           # whether charge or energy is above the limit of IEC 61010-1
+    worst_power: tuple           # (frequency Hz, apparent VA, dissipated W) where the apparent power is largest
+
+
+def limits_view(design, found, moving, mean_level_db=None, judgement=Judgement()):
+    """LimitsView of a design with its Response, Excursion and mean level. Raises as voltage_window()."""
+    window = voltage_window(design)
+    charge, energy, beyond = stored(design, found)
+    worst = int(np.argmax(found.apparent_power))
+    return LimitsView(
+        design=design, response=found, excursion=moving, window=window, judgement=judgement,
+        swing=(_lowest_voltage(design.drive), peak_voltage(design.drive)),
+        margins=margins(design, window, judgement.safety, mean_level_db),
+        breakdown_band=breakdown_band(window, judgement.modulus, judgement.reference_area, design.film.breakdown_field),
+        **_states(design, found, moving), charge=charge, energy=energy, beyond_limit=beyond,
+        worst_power=tuple(float(x[worst]) for x in (found.frequency, found.apparent_power, found.dissipated_power)))
+
+
+def _lowest_voltage(drive):
+    """V, the lowest voltage of the drive; below zero where the signal is larger than the bias."""
+    if drive.law == "square-root":
+        return float(np.sqrt(max(drive.bias**2 - 2*drive.bias*drive.amplitude, 0.0)))
+    return drive.bias - drive.amplitude
+
+
+def _states(design, found, moving):
+    """The three states the film is judged in."""
+    rest, solved = found.rest, statics.solve(design)
+    top = solved.peak_state
+    worst = [int(np.argmax(moving.peak_field)), int(np.argmin(moving.least_stress)), int(np.argmax(moving.stroke))]
+    return {
+        "at_rest": State(float(rest.field.max()),
+                         float(min(rest.stress_meridional.min(), rest.stress_hoop.min())), 0.0),
+        "at_peak": State(rest.peak_field, rest.least_stress,
+                         None if top is None else float(abs(top[0] - solved.state[0]))),
+        "at_worst": State(float(moving.peak_field[worst[0]]), float(moving.least_stress[worst[1]]),
+                          float(moving.stroke[worst[2]]), tuple(float(moving.frequency[i]) for i in worst))}
 
 
 def excursion(design, found: Response):

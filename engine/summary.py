@@ -5,6 +5,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from engine.design import Design
+from engine.limits import Excursion, excursion
 from engine.response import DEFAULT_BAND, Response, response
 from engine.statics import frozen
 
@@ -33,12 +34,14 @@ class Overview:
     response: Response
     key_figures: KeyFigures
     energy_share: np.ndarray         # (n_modes+1,) of the band's sum of squared contributions, the residual last
+    excursion: Excursion             # where in the band the linear result holds
 
 
 def overview(design, band=DEFAULT_BAND):
     """Response of a design over a band (low, high) in Hz with its key figures. Raises as response()."""
     found = response(design, band=band)
-    return Overview(design, (float(band[0]), float(band[1])), found, key_figures(found), energy_share(found))
+    return Overview(design, (float(band[0]), float(band[1])), found, key_figures(found), energy_share(found),
+                    excursion(design, found))
 
 
 def key_figures(found):

@@ -1,6 +1,7 @@
 """The voltage window: what the rest state and the modes do as the bias rises, and the walls it must stay between."""
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
+from functools import lru_cache
 from itertools import islice
 
 import numpy as np
@@ -9,10 +10,12 @@ import scipy.linalg
 from engine import air, radiation, rear, source, statics
 from engine import film as flm
 from engine.branch import arc, follow, is_stable, march
+from engine.design import Drive, Listener
 from engine.statics import extremes, frozen, peak_voltage
 
 HIGHEST_BIAS = 20e3           # V, the bound of the bias
 N_BIAS, N_MODES = 60, 8
+FIRST_REACH = 100.0           # V
 N_BEYOND = 14                 # points drawn past a turning point
 LAST_TENSION = 2e-3           # of the unbiased one: what the last stable state of a flat film has left
 N_POLYNOMIALS = 24            # of the air's mass: enough for the lowest modes
@@ -41,15 +44,24 @@ class VoltageWindow:
 
 
 def voltage_window(design, n_bias=N_BIAS, n_modes=N_MODES):
-    """Voltage window of a design: n_bias rest states from zero to beyond its bias, n_modes lowest modes at each.
+    """Voltage window of a design: n_bias rest states from zero to beyond its walls, n_modes lowest modes at each.
 
     The walls are searched up to the highest bias a design may have, 20 kV, each to 0.1 %; None: not reached. A turning
-    point is followed by pseudo-arc-length.
+    point is followed by pseudo-arc-length. Where the last wall is passed, the window reaches on in doublings of 100 V
+    until it holds the peak of the drive, so that moving the drive seldom changes it.
 
     Returns: VoltageWindow.
     Raises: NoRestState where there is no stable rest state even without bias; NotConverged.
     """
-    start = statics.solve(design.with_values({"drive.bias": 0.0, "drive.amplitude": 0.0, "drive.law": "sine"}))
+    doublings = np.ceil(np.log2(max(1.25*peak_voltage(design.drive), FIRST_REACH)/FIRST_REACH))
+    without = replace(design, name="-", note="", drive=Drive(bias=0.0, amplitude=0.0), listener=Listener())
+    return _window(without, n_bias, n_modes, float(FIRST_REACH*2**doublings))
+
+
+@lru_cache(maxsize=8)
+def _window(design, n_bias, n_modes, reach):
+    """voltage_window of a design without drive, to at least `reach` volts where the film holds so long."""
+    start = statics.solve(design)
     film, q = start.film, start.state
     K = flm.linearise(film, q, 0.0)[2]
     path = [(q, K, 0.0, None), *march(film, q, K, 0.0, HIGHEST_BIAS)]
@@ -58,8 +70,8 @@ def voltage_window(design, n_bias=N_BIAS, n_modes=N_MODES):
     if slack is None and pull_in is not None and _least(film, path[-1]) < LAST_TENSION*_least(film, path[0]):
         slack = pull_in        # a flat film loses its tension and its stability together
     breakdown = _crossing(film, path, lambda q, V: -extremes(film, q, V)[1][0], -design.film.breakdown_field)
-    walls = [v for v in (slack, breakdown) if v is not None]
-    wanted = max(1.25*peak_voltage(design.drive), 1.15*min(walls, default=0.0), 100.0)
+    last = max((v for v in (slack, pull_in, breakdown) if v is not None), default=0.0)
+    wanted = max(reach if reach > last else 0.0, 1.08*last)
     top = min(wanted, pull_in or HIGHEST_BIAS, HIGHEST_BIAS)
     points = list(_stable_points(film, path, np.linspace(0.0, top, n_bias)))
     if pull_in is not None and top == pull_in:

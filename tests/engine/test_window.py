@@ -192,3 +192,35 @@ def test_mesh_of_the_window_is_the_static_one():
     design = sample("palm-house-arch")
     rest = statics.solve(design)
     assert rest.film.mesh.order == statics.STATIC_ORDER and isinstance(rest.film.mesh, mesh.Mesh)
+
+
+@samples
+def test_limits_view_says_what_the_parts_say(name):
+    """Each number equals that of the part it comes from; the swing is the drive's own (elementary)."""
+    design = sample(name)
+    seen = engine.overview(design)
+    view = engine.limits_view(design, seen.response, seen.excursion, seen.key_figures.mean_level_db,
+                              engine.Judgement(safety=1.5))
+    bias, amplitude = design.drive.bias, design.drive.amplitude
+    assert view.swing == (bias - amplitude, bias + amplitude)
+    breakdown = next(m for m in view.margins if m.wall == "breakdown")
+    assert breakdown.largest_amplitude == pytest.approx(view.window.breakdown_voltage/1.5 - bias)
+    peak = engine.equilibrium(design.with_values({"drive.bias": bias + amplitude, "drive.amplitude": 0.0}))
+    assert view.at_peak.stroke == pytest.approx(abs(peak.centre_height - seen.response.rest.centre_height), rel=1e-6)
+    assert view.at_peak.peak_field == pytest.approx(peak.peak_field, rel=1e-7)
+    assert view.at_rest.least_stress > view.at_peak.least_stress > 0
+    assert view.at_worst.stroke == seen.response.stroke.max() and len(view.at_worst.frequency) == 3
+    root = design.with_values({"drive.law": "square-root"})
+    low, high = engine.limits_view(root, seen.response, seen.excursion).swing
+    assert high**2 - low**2 == pytest.approx(4*bias*amplitude)
+
+
+def test_moving_the_drive_below_the_last_wall_computes_no_new_window():
+    design = sample("bench-back")
+    window = engine.voltage_window(design)
+    assert engine.voltage_window(design.with_values({"drive.bias": 2050.0, "drive.amplitude": 120.0})) is window
+
+
+def test_a_judgement_out_of_bounds_is_refused_in_words():
+    with pytest.raises(engine.InvalidDesign, match="Safety factor .*allowed is 1 to 5"):
+        engine.Judgement(safety=0.5)
