@@ -5,11 +5,14 @@ The browser's side is tested with a real browser in tests/browser.
 
 import dataclasses
 
+import panel as pn
+import panel_material_ui as pmui
 import pytest
 from panel.reactive import Syncable
+from panel.util import edit_readonly
 
 from app.controls import Controls
-from app.main import INPUT_DELAY, lower_input_delay
+from app.main import INPUT_DELAY, ignore_busy, lower_input_delay
 from app.state import DesignState
 from app.values import on_slider
 from engine.design import GROUPS, field_of
@@ -137,3 +140,15 @@ def test_the_servers_input_delay_is_lowered(controls):
     assert isinstance(Syncable.__dict__["_debounce"], int)
     lower_input_delay()
     assert controls.groups["film"]._debounce == INPUT_DELAY == 20
+
+
+def test_the_frame_is_left_alone_while_the_server_is_busy():
+    """Its busy mark changed twice for every move of a slider, each time at the cost of a look through all models."""
+    frame = pmui.Page()
+    ignore_busy(frame)
+    seen = []
+    frame.param.watch(seen.append, "busy")
+    for busy in (True, False):
+        with edit_readonly(pn.state):
+            pn.state.busy = busy
+    assert seen == []
