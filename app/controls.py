@@ -53,7 +53,7 @@ class Group(JSComponent):
 
     def __init__(self, state, group):
         self._state = state
-        self._blamed, self._typed, self._answered = {}, {}, {}
+        self._blamed, self._typed, self._answered, self._written = {}, {}, {}, {}
         self._build(group)
         super().__init__(title=group.capitalize(), group=group, open=group not in FOLDED, fields=self._specs(),
                          shown=self._now(), css_classes=["group", f"group-{group}"], margin=0,
@@ -62,8 +62,10 @@ class Group(JSComponent):
 
     def say(self, name, text):
         """Show a message at one field (None: at none), and none at the others."""
-        self._blamed = {name: text} if name and text else {}
-        self._show()
+        blamed = {name: text} if name and text else {}
+        if blamed != self._blamed:
+            self._blamed = blamed
+            self._show()
 
     def _build(self, group):
         """Take up the group's fields and watch their values."""
@@ -90,8 +92,10 @@ class Group(JSComponent):
         field, value = self._fields[name], getattr(self._values, name)
         if field.metadata["kind"] in ("choice", "flag"):
             return {"value": value, "hidden": False}
-        place = on_slider(field, value) if field.metadata["bounds"] else None
-        return {"text": value_text(field, value), "place": place, "hidden": self._without_effect(name)}
+        if name not in self._written or self._written[name][0] != value:     # writing a number takes a while
+            place = on_slider(field, value) if field.metadata["bounds"] else None
+            self._written[name] = value, {"text": value_text(field, value), "place": place}
+        return {**self._written[name][1], "hidden": self._without_effect(name)}
 
     def _without_effect(self, name):
         """Whether a field changes nothing as the others stand: a volume behind an open film, a law's parameters."""

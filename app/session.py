@@ -1,5 +1,6 @@
 """One visitor's session: watches the state, asks the worker, publishes the result, busy and the problem."""
 
+import asyncio
 from dataclasses import dataclass
 from functools import partial
 
@@ -7,6 +8,8 @@ import param
 
 from app import worker
 from app.state import DesignState, samples
+
+PATIENCE = 0.5      # s the next result waits for a browser that does not say it has painted (a tab out of sight)
 
 __all__ = ["Problem", "Session", "samples", "visit"]
 
@@ -36,6 +39,7 @@ class Session(param.Parameterized):
     overview = param.Parameter(doc="Overview of the last design that could be computed, or None")
     held = param.Parameter(doc="Overview of the held design in the band shown, or None")
     busy = param.Boolean(default=False, doc="whether a newer design than the one shown is being computed")
+    sent = param.Integer(default=0, doc="how many overviews have been published; the browser answers each with `painted`")
     problem = param.ClassSelector(class_=Problem, allow_None=True, doc="why the newest design is not shown, or None")
 
     def __init__(self, state, document=None, updater=None):
@@ -45,7 +49,9 @@ class Session(param.Parameterized):
         self._waiting = {}           # what to publish once the browser is there
         self._closed = False
         updater = updater or _shared_updater
-        self._shown = updater(self._publish)
+        self._painted = asyncio.Event()
+        self._painted.set()
+        self._shown = updater(self._publish, self._browser_ready)
         self._grey = updater(self._publish_held)
         self._watches = [state.param.watch(self._ask, ["design", "band", "invalid"], what="value"),
                          state.param.watch(self._ask_held, ["held", "band"])]
@@ -63,6 +69,19 @@ class Session(param.Parameterized):
         for take, outcome in self._waiting.items():
             self._in_document(take, outcome)
         self._waiting = {}
+
+    def painted(self, count):
+        """The browser has painted so many overviews: the next may come."""
+        if count >= self.sent:
+            self._painted.set()
+
+    async def _browser_ready(self):
+        """Wait until the browser has painted what it was sent, so that results never queue up there."""
+        if self._document is not None and self._connected:
+            try:
+                await asyncio.wait_for(self._painted.wait(), PATIENCE)
+            except TimeoutError:
+                self._painted.set()
 
     def hold(self):
         """Hold the design shown as the grey reference, or let the held one go."""
@@ -129,7 +148,8 @@ class Session(param.Parameterized):
         values = {"busy": (self.state.design, self.state.band) != outcome.wish and self.state.invalid is None}
         failure = outcome.failure
         if failure is None:
-            values["overview"] = outcome.result
+            values.update(overview=outcome.result, sent=self.sent + 1)
+            self._painted.clear()
         if self.state.invalid is None:
             values["problem"] = failure and Problem(failure.text, failure.key or self.state.touched, failure.kind)
         self.param.update(**values)
@@ -140,10 +160,10 @@ class Session(param.Parameterized):
             self.held = outcome.result
 
 
-def _shared_updater(publish):
+def _shared_updater(publish, ready=None):
     """Access to the process's worker."""
     shared = worker.shared()
-    return worker.Updater(shared.overview, publish, shared.executor)
+    return worker.Updater(shared.overview, publish, shared.executor, ready)
 
 
 def visit(design, document=None, updater=None):

@@ -47,6 +47,12 @@ class Worker:
         sys.setswitchinterval(SWITCH_INTERVAL)
         self.executor = ThreadPoolExecutor(n_threads, thread_name_prefix="compute")
         self.overview = functools.lru_cache(maxsize=REMEMBERED)(_overview)
+        self.limits = functools.lru_cache(maxsize=REMEMBERED)(self._limits)
+
+    def _limits(self, design, band, judgement):
+        """`engine.limits_view` of an overview, which is computed or remembered."""
+        seen = self.overview(design, band)
+        return engine.limits_view(design, seen.response, seen.excursion, seen.key_figures.mean_level_db, judgement)
 
 
 class Updater:
@@ -59,10 +65,12 @@ class Updater:
     publish : callable
         Called with an `Outcome` on the event loop's thread, once for every computation.
     executor : concurrent.futures.Executor
+    ready : callable or None
+        Coroutine function awaited before each publication: when the last one has been painted. None: always ready.
     """
 
-    def __init__(self, compute, publish, executor):
-        self._compute, self._publish, self._executor = compute, publish, executor
+    def __init__(self, compute, publish, executor, ready=None):
+        self._compute, self._publish, self._executor, self._ready = compute, publish, executor, ready
         self._wanted = None
         self._task = None
         self._closed = False
@@ -92,7 +100,10 @@ class Updater:
         loop = asyncio.get_running_loop()
         while self._wanted is not None:
             wish, self._wanted = self._wanted, None
-            self._publish(await loop.run_in_executor(self._executor, attempt, self._compute, wish))
+            outcome = await loop.run_in_executor(self._executor, attempt, self._compute, wish)
+            if self._ready is not None:
+                await self._ready()
+            self._publish(outcome)
 
 
 def attempt(compute, wish):

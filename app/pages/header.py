@@ -33,6 +33,7 @@ class Header(JSComponent):
     can_redo = param.Boolean()
     dirty = param.Boolean()
     busy = param.Boolean()
+    sent = param.Integer(doc="overviews published; the browser answers when it has painted them")
 
     _esm = BESIDE / "header.js"
     _stylesheets: ClassVar = [(BESIDE / "header.css").read_text(encoding="utf-8")]
@@ -41,13 +42,14 @@ class Header(JSComponent):
         self._session = session
         super().__init__(product=product, samples=samples(), margin=0, sizing_mode="stretch_width", **self._seen())
         session.state.param.watch(self._show, ["design", "held", "can_undo", "can_redo", "dirty"])
-        session.param.watch(self._show, "busy")
+        session.param.watch(self._show, ["busy", "sent"])
 
     def _seen(self):
         """What the header shows of the session."""
         state = self._session.state
         return {"design_name": state.design.name, "held": state.held is not None, "can_undo": state.can_undo,
-                "can_redo": state.can_redo, "dirty": state.dirty, "busy": self._session.busy}
+                "can_redo": state.can_redo, "dirty": state.dirty, "busy": self._session.busy,
+                "sent": self._session.sent}
 
     def _show(self, *_):
         """Show the session as it is now."""
@@ -64,7 +66,9 @@ class Header(JSComponent):
     def _do(self, message):
         """One request of the browser."""
         state = self._session.state
-        if "rename" in message:
+        if "painted" in message:
+            self._session.painted(message["painted"])
+        elif "rename" in message:
             state.rename(message["rename"])
         elif "too_large" in message:
             tell(f"{message['file']} has {message['too_large'] / 1024:.0f} kB; a design file has at most "

@@ -43,4 +43,4 @@ class AtOnce:
 @pytest.fixture
 def at_once():
     """Makes the `updater` argument of a session out of a function (design, band) -> overview."""
-    return lambda compute: lambda publish: AtOnce(compute, publish)
+    return lambda compute: lambda publish, ready=None: AtOnce(compute, publish)

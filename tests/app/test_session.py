@@ -185,6 +185,32 @@ def test_a_closed_updater_publishes_nothing():
     assert published == []
 
 
+def test_results_wait_for_the_browser_to_paint():
+    """While one is being painted the next is computed but not sent; meanwhile the latest wish still wins."""
+    published, painted = [], []
+
+    async def drag():
+        gate = asyncio.Event()
+
+        async def ready():
+            painted.append(len(published))
+            await gate.wait()
+
+        with ThreadPoolExecutor(1) as executor:
+            updater = worker.Updater(lambda wish: wish, published.append, executor, ready)
+            updater.want(0)
+            while not painted:
+                await asyncio.wait([updater._task], timeout=0.01)
+            updater.want(1)
+            updater.want(2)
+            assert published == []
+            gate.set()
+            await updater._task
+    asyncio.run(drag())
+    assert [outcome.result for outcome in published] == [0, 2]
+    assert painted == [0, 1]
+
+
 def test_one_blas_thread_and_few_of_our_own():
     shared = worker.shared()
     shared.executor.submit(engine.Design).result()
