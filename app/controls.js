@@ -84,9 +84,10 @@ export function render({model}) {
     const meaning = make("p", {className: "meaning", id: `meaning-${spec.name}`, textContent: spec.meaning})
     const message = make("p", {className: "message", id: `message-${spec.name}`})
     message.setAttribute("role", "alert")
+    const caution = make("p", {className: "caution"})
     const words = spec.kind === "band" ? "field field-band" : `field field-${model.group}-${spec.name}`
     const field = make("div", {className: `${words} kind-${spec.kind}`},
-      make("label", {htmlFor: id, textContent: spec.label}), ...input.nodes, message, meaning)
+      make("label", {htmlFor: id, textContent: spec.label}), ...input.nodes, caution, message, meaning)
     for (const node of input.described) { node.setAttribute("aria-describedby", `${meaning.id} ${message.id}`) }
     // the meaning, after a moment under the pointer
     let wait = null
@@ -95,7 +96,7 @@ export function render({model}) {
     for (const kind of ["pointerleave", "pointerdown", "input"]) { field.addEventListener(kind, hide) }
     field.addEventListener("keydown", (event) => { field.classList.toggle("quiet", event.key === "Escape") })
     body.append(field)
-    fields.set(spec.name, {field, input, message, last})
+    fields.set(spec.name, {field, input, caution, message, last})
   }
 
   const fold = make("button", {type: "button", className: "fold", textContent: model.title, title: "Arrow down: into this group"})
@@ -107,10 +108,11 @@ export function render({model}) {
   }
   const show = () => {
     for (const [name, now] of Object.entries(model.shown)) {
-      const {field, input, message, last} = fields.get(name)
+      const {field, input, caution, message, last} = fields.get(name)
       field.hidden = now.hidden
       field.classList.toggle("wrong", now.message !== "")
       if (message.textContent !== now.message) { message.textContent = now.message }
+      if (caution.textContent !== (now.caution ?? "")) { caution.textContent = now.caution ?? "" }
       for (const node of input.described) { node.setAttribute("aria-invalid", String(now.message !== "")) }
       input.show(now, now.n >= last.n)
     }

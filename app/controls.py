@@ -12,11 +12,14 @@ import panel as pn
 import param
 from panel.custom import JSComponent
 
-from app.state import BANDS, shown_fields
+from app.state import BANDS, judged_fields, shown_fields
 from app.values import (
     band_text,
+    caution_text,
     from_slider,
+    in_si,
     meaning_text,
+    on_screen,
     on_slider,
     slider_scale,
     typed_band,
@@ -89,13 +92,18 @@ class Group(JSComponent):
 
     def _field_now(self, name):
         """Text, place or value of one field, and whether it has no effect and is left out."""
-        field, value = self._fields[name], getattr(self._values, name)
+        field, value = self._fields[name], self._value(name)
         if field.metadata["kind"] in ("choice", "flag"):
             return {"value": value, "hidden": False}
         if name not in self._written or self._written[name][0] != value:     # writing a number takes a while
             place = on_slider(field, value) if field.metadata["bounds"] else None
-            self._written[name] = value, {"text": value_text(field, value), "place": place}
+            self._written[name] = value, {"text": value_text(field, value), "place": place,
+                                          "caution": caution_text(f"{self.group}.{name}", value)}
         return {**self._written[name][1], "hidden": self._without_effect(name)}
+
+    def _value(self, name):
+        """The display value of one field."""
+        return getattr(self._values, name)
 
     def _without_effect(self, name):
         """Whether a field changes nothing as the others stand: a volume behind an open film, a law's parameters."""
@@ -131,7 +139,7 @@ class Group(JSComponent):
         field = self._fields[name]
         if "place" in move:
             value = from_slider(field, move["place"])
-        elif "text" in move and move["text"] == value_text(field, getattr(self._values, name)):
+        elif "text" in move and move["text"] == value_text(field, self._value(name)):
             return
         elif "text" in move and field.metadata["kind"] == "list":
             value = typed_list(move["text"], nested=name == "relaxation")
@@ -143,6 +151,10 @@ class Group(JSComponent):
             if value != round(value):
                 raise ValueError(f"{value:g} is not a whole number.")
             value = round(value)
+        self._put(name, value)
+
+    def _put(self, name, value):
+        """A display value to the state."""
         setattr(self._values, name, value)
 
 
@@ -166,6 +178,20 @@ class Band(Group):
         self._state.set_band(typed_band(move["text"]))
 
 
+class JudgedBy(Group):
+    """What the walls are judged by: no part of the design, so neither undone nor saved."""
+
+    def _build(self, group):
+        self._fields = {field.name: field for field in judged_fields()}
+        self._state.param.watch(self._refresh, "judgement")
+
+    def _value(self, name):
+        return on_screen(self._fields[name], getattr(self._state.judgement, name))
+
+    def _put(self, name, value):
+        self._state.judge({name: in_si(self._fields[name], value)})
+
+
 class Controls:
     """The column of all controls.
 
@@ -176,7 +202,9 @@ class Controls:
 
     def __init__(self, state):
         self.groups = {name: Group(state, name) for name in shown_fields()}
-        self.view = pn.Column(*self.groups.values(), Band(state, "band"), css_classes=["controls"],
+        self.judged_by = JudgedBy(state, "judgement")
+        self.judged_by.visible = False
+        self.view = pn.Column(self.judged_by, *self.groups.values(), Band(state, "band"), css_classes=["controls"],
                               stylesheets=[COLUMN_CSS], margin=0)
 
     def blame(self, key, text):

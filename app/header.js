@@ -40,6 +40,10 @@ export function render({model, el}) {
   name.addEventListener("keydown", (event) => { if (event.key === "Enter") { name.blur() } })
   const busy = make("span", {className: "busy", role: "status"})
 
+  // ---- pages
+  const tabs = make("nav", {className: "tabs", ariaLabel: "Pages"}, ...model.pages.map((page) => make("button", {
+    type: "button", className: "tab", value: page, textContent: page[0].toUpperCase() + page.slice(1), onclick: () => send({page})})))
+
   // ---- actions
   const action = (words, about, run) => make("button", {type: "button", className: "action", textContent: words, title: about, onclick: run})
   const hold = action("hold", "Keep this design as the grey reference (key h)", () => send({act: "hold"}))
@@ -155,14 +159,17 @@ export function render({model, el}) {
     save.textContent = model.dirty ? "save •" : "save"
     save.setAttribute("aria-label", model.dirty ? "save, changed since the file" : "save")
     busy.textContent = model.busy ? "computing" : ""
+    for (const tab of tabs.children) {
+      if (tab.value === model.page) { tab.setAttribute("aria-current", "page") } else { tab.removeAttribute("aria-current") }
+    }
   }
   samples.append(make("option", {value: "", textContent: "samples"}),
     ...model.samples.map(([value, words]) => make("option", {value, textContent: words})))
-  for (const property of ["design_name", "held", "can_undo", "can_redo", "dirty", "busy"]) { model.on(property, show) }
+  for (const property of ["design_name", "held", "can_undo", "can_redo", "dirty", "busy", "page"]) { model.on(property, show) }
   show()
 
   const bar = make("div", {className: "bar"},
-    make("span", {className: "product", textContent: model.product}), name, busy, make("span", {className: "space"}),
+    make("span", {className: "product", textContent: model.product}), tabs, name, busy, make("span", {className: "space"}),
     hold, undo, redo, open, save, link, samples, file)
   return make("div", {className: "header"}, skip, bar, share)
 }

@@ -10,6 +10,7 @@ from panel.util import edit_readonly
 
 from app import theme
 from app.pages.header import Header, tell
+from app.pages.limits import LimitsPage
 from app.pages.response import ResponsePage
 from app.session import visit
 
@@ -51,6 +52,7 @@ def page(design):
     open_address(session.state)
     header = Header(session, PRODUCT)
     response = ResponsePage(session, dark=pn.config.theme == "dark")
+    LimitsPage(session, response)
     frame = pmui.Page(header=[header], main=[response.view], theme_config=colours(), sx=FRAME, busy_indicator=None,
                       title="", meta_title=PRODUCT, favicon=ICON, raw_css=[LOADER_CSS], sizing_mode="stretch_both")
     ignore_busy(frame)

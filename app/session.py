@@ -11,7 +11,9 @@ from app.state import DesignState, samples
 
 PATIENCE = 0.5      # s the next result waits for a browser that does not say it has painted (a tab out of sight)
 
-__all__ = ["Problem", "Session", "samples", "visit"]
+__all__ = ["PAGES", "Problem", "Session", "samples", "visit"]
+
+PAGES = ("response", "limits")
 
 
 @dataclass(frozen=True)
@@ -31,18 +33,21 @@ class Session(param.Parameterized):
     state : DesignState
     document : bokeh.document.Document or None
         Where results are shown, once `connected` is called; None publishes at once (tests, scripts).
-    updater : callable
-        Makes the access to the worker from (compute, publish); replaced in tests.
+    updater, limits_updater : callable
+        Make the access to the worker from (publish), for overviews and for the limits; replaced in tests.
     """
 
     state = param.ClassSelector(class_=DesignState, constant=True)
     overview = param.Parameter(doc="Overview of the last design that could be computed, or None")
     held = param.Parameter(doc="Overview of the held design in the band shown, or None")
+    page = param.Selector(default=PAGES[0], objects=list(PAGES), doc="the page shown")
+    limits = param.Parameter(doc="LimitsView of the last design whose limits could be computed, or None")
+    limits_fault = param.String(default="", doc="why the newest design's limits are not shown, or nothing")
     busy = param.Boolean(default=False, doc="whether a newer design than the one shown is being computed")
     sent = param.Integer(default=0, doc="how many overviews have been published; the browser answers each with `painted`")
     problem = param.ClassSelector(class_=Problem, allow_None=True, doc="why the newest design is not shown, or None")
 
-    def __init__(self, state, document=None, updater=None):
+    def __init__(self, state, document=None, updater=None, limits_updater=None):
         super().__init__(state=state)
         self._document = document
         self._connected = document is None
@@ -53,8 +58,11 @@ class Session(param.Parameterized):
         self._painted.set()
         self._shown = updater(self._publish, self._browser_ready)
         self._grey = updater(self._publish_held)
+        self._walls = (limits_updater or _shared_limits)(self._publish_limits)
         self._watches = [state.param.watch(self._ask, ["design", "band", "invalid"], what="value"),
-                         state.param.watch(self._ask_held, ["held", "band"])]
+                         state.param.watch(self._ask_held, ["held", "band"]),
+                         state.param.watch(self._ask_limits, "judgement")]
+        self.param.watch(self._ask_limits, ["page", "overview"])
 
     def start(self):
         """Ask for the first overview."""
@@ -92,8 +100,8 @@ class Session(param.Parameterized):
         self._closed = True
         for watch in self._watches:
             self.state.param.unwatch(watch)
-        self._shown.close()
-        self._grey.close()
+        for updater in (self._shown, self._grey, self._walls):
+            updater.close()
 
     def _ask(self, *events):
         """Want the newest design; one that is invalid is a problem at once and leaves the plots."""
@@ -122,6 +130,11 @@ class Session(param.Parameterized):
         else:
             self._grey.want(design, band)
 
+    def _ask_limits(self, *_):
+        """Want the limits of the design shown, where the page of the limits is."""
+        if self.page == "limits" and self.overview is not None:
+            self._walls.want(self.overview.design, tuple(self.overview.band), self.state.judgement)
+
     def _publish(self, outcome):
         """Take a result or a failure to the document."""
         self._in_document(self._take, outcome)
@@ -129,6 +142,10 @@ class Session(param.Parameterized):
     def _publish_held(self, outcome):
         """Take the held design's result to the document."""
         self._in_document(self._take_held, outcome)
+
+    def _publish_limits(self, outcome):
+        """Take the limits to the document."""
+        self._in_document(self._take_limits, outcome)
 
     def _in_document(self, take, outcome):
         """Publish under the document's lock, or at once without a document; wait for a browser that is not there yet."""
@@ -158,6 +175,20 @@ class Session(param.Parameterized):
         """Publish the held design's overview if it is still held."""
         if outcome.failure is None and outcome.wish == (self.state.held, self.state.band):
             self.held = outcome.result
+
+
+    def _take_limits(self, outcome):
+        """Publish the limits, or why there are none."""
+        if outcome.failure is None:
+            self.param.update(limits=outcome.result, limits_fault="")
+        else:
+            self.limits_fault = outcome.failure.text
+
+
+def _shared_limits(publish):
+    """Access to the process's worker for the limits."""
+    shared = worker.shared()
+    return worker.Updater(shared.limits, publish, shared.executor)
 
 
 def _shared_updater(publish, ready=None):

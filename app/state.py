@@ -2,7 +2,7 @@
 
 import re
 import time
-from dataclasses import dataclass, fields
+from dataclasses import dataclass, fields, replace
 from importlib import resources
 
 import param
@@ -11,7 +11,8 @@ from app.values import in_si, on_screen
 from engine import design as designs
 from engine import designfile
 from engine.errors import InvalidDesign
-from engine.fields import display_value
+from engine.fields import at_slider_position, display_value, slider_position
+from engine.limits import Judgement
 
 DEFAULT_BAND = (20.0, 5e3)
 BANDS = ((20.0, 2e3), DEFAULT_BAND, (20.0, 10e3), (100.0, 10e3))   # offered; others can be typed
@@ -34,6 +35,11 @@ def shown_fields():
     """Group name -> dataclass fields with a control, in order: those whose physics is computed."""
     shown = {name: [f for f in fields(cls) if not f.metadata["later"]] for name, cls in designs.GROUPS.items()}
     return {name: group for name, group in shown.items() if group}
+
+
+def judged_fields():
+    """The dataclass fields of a Judgement."""
+    return fields(Judgement)
 
 
 def _parameter(field):
@@ -67,6 +73,7 @@ class DesignState(param.Parameterized):
     invalid = param.ClassSelector(class_=Invalid, allow_None=True, doc="why the values set are no design, or None")
     held = param.ClassSelector(class_=designs.Design, allow_None=True, doc="the design held as a reference, or None")
     band = param.Tuple(default=DEFAULT_BAND, length=2, doc="(low, high) Hz shown")
+    judgement = param.ClassSelector(class_=Judgement, default=Judgement(), doc="what the walls are judged by")
     can_undo = param.Boolean(default=False)
     can_redo = param.Boolean(default=False)
     dirty = param.Boolean(default=False, doc="whether the design differs from the file it was opened from or saved to")
@@ -106,6 +113,18 @@ class DesignState(param.Parameterized):
     def release(self):
         """The control was let go: the step ends here, unless the same control moves on at once."""
         self._released = self._clock()
+
+    def place(self, key, value):
+        """Put a number of the design (SI) at the nearest stop of its slider: a drag in a picture."""
+        field = designs.field_of(key)
+        group, _, name = key.partition(".")
+        low, high = field.metadata["bounds"]
+        position = slider_position(field, min(max(value, low), high))
+        setattr(self.groups[group], name, on_screen(field, at_slider_position(field, position)))
+
+    def judge(self, changes):
+        """Judge the walls by other values (SI, by name); InvalidDesign says what is wrong with one."""
+        self.judgement = replace(self.judgement, **changes)
 
     def rename(self, name):
         """Give the design another name; InvalidDesign if it cannot be one."""

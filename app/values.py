@@ -3,6 +3,7 @@
 import math
 import re
 
+from engine.design import field_of
 from engine.fields import (
     UNITS,
     at_slider_position,
@@ -13,6 +14,7 @@ from engine.fields import (
     si_value,
     slider_position,
 )
+from engine.limits import HAZARDOUS_VOLTAGE
 
 TYPED = re.compile(r"([+-]?(?:\d+\.?\d*|\.\d+)(?:e[+-]?\d+)?)\s*(.*)", re.IGNORECASE)
 ABSENT = ("none", "unlimited", "")   # what is typed for no limit
@@ -114,6 +116,13 @@ def value_text(field, shown):
 def meaning_text(field):
     """What a field means, and its allowed range where it has one."""
     return field.metadata["meaning"] + (f". {bounds_text(field)}." if field.metadata["bounds"] else ".")
+
+
+def caution_text(key, shown):
+    """One calm line at a control whose value can hurt, or nothing."""
+    if key == "drive.bias" and in_si(field_of(key), shown) > HAZARDOUS_VOLTAGE:
+        return f"Above {HAZARDOUS_VOLTAGE:g} V: dangerous to touch. Discharge first; qualified people, local rules."
+    return ""
 
 
 def slider_scale(field):

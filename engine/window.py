@@ -73,7 +73,10 @@ def _window(design, n_bias, n_modes, reach):
     last = max((v for v in (slack, pull_in, breakdown) if v is not None), default=0.0)
     wanted = max(reach if reach > last else 0.0, 1.08*last)
     top = min(wanted, pull_in or HIGHEST_BIAS, HIGHEST_BIAS)
-    points = list(_stable_points(film, path, np.linspace(0.0, top, n_bias)))
+    along = np.linspace(0.0, 1.0, n_bias)
+    if pull_in is not None and top == pull_in:
+        along = 1 - (1 - along)**1.5             # closer together where everything turns
+    points = list(_stable_points(film, path, top*along))
     if pull_in is not None and top == pull_in:
         q, K, V, _ = points[-1]
         points += [(q, K, V, None) for q, V, K in islice(arc(film, q, K, V), N_BEYOND)]

@@ -34,15 +34,15 @@ class Board:
     """
 
     def __init__(self, dark=False):
-        self._inks = Inks(theme.palette(dark))
+        self.inks = Inks(theme.palette(dark))
         self._style = InlineStyleSheet(css=(HERE.parent / "board.css").read_text(encoding="utf-8"))
-        self._spine, self._phasor = Spine(self._inks), Phasor(self._inks)
-        self._section, self._gallery = Section(self._inks), Gallery(self._inks)
+        self._spine, self._phasor = Spine(self.inks), Phasor(self.inks)
+        self._section, self._gallery = Section(self.inks), Gallery(self.inks)
         self._plots = {"level": self._spine.level, "share": self._spine.share, "phasor": self._phasor.plot,
                        "section": self._section.plot, "gallery": self._gallery.plot}
-        self._menus = {name: self._html(_menu_html(name), position="absolute", top="0", right="0", z_index="2")
+        self._menus = {name: self.html(menu_html(name), position="absolute", top="0", right="0", z_index="2")
                        for name in PLOTS}
-        self._notices = {name: self._html("", position="absolute", top="32%", left="12%", width="76%", z_index="2")
+        self._notices = {name: self.html("", position="absolute", top="32%", left="12%", width="76%", z_index="2")
                          for name in PLOTS}
         for notice in self._notices.values():
             notice.visible = False
@@ -57,32 +57,33 @@ class Board:
         self._pressed.syncable = True
         self._listeners = {}
         self._pressed.on_change("data", self._on_pressed)
+        self.level_plot, self.x_range = self._spine.level, self._spine.x_range     # for other pages' figures
         self._place()
         self._overview = self._held = None
         self._start_browser_code()
 
     def _place(self):
-        self.strip, self.foot, self.changes = (self._html(f'<div data-word="{name}"></div>') for name in WORDS)
-        self._sentence = self._html('<span data-word="sentence" role="status"></span>')
+        self.strip, self.foot, self.changes = (self.html(f'<div data-word="{name}"></div>') for name in WORDS)
+        self._sentence = self.html('<span data-word="sentence" role="status"></span>')
         self._sentence.css_classes = ["sentence"]
-        self._buttons = self._html(_BUTTONS)
+        self._buttons = self.html(_BUTTONS)
         self._buttons.sizing_mode = None
         self.sentence = Row(self._sentence, self._buttons, sizing_mode="stretch_width")
-        self._gallery_head = self._html(_GALLERY_HEAD)
+        self._gallery_head = self.html(_GALLERY_HEAD)
         self.level, self.share, self.phasor, self.section = (self._box(name) for name in PLOTS[:4])
         self.gallery = Column(self._gallery_head, self._box("gallery"), sizing_mode="stretch_both")
         self.changes.visible = False
 
-    def _html(self, text, **styles):
+    def html(self, text, **styles):
+        """Words that follow light and dark, in the page's type; ``styles`` place them."""
         styles = {"--font": theme.FONT, **{name.replace("_", "-"): value for name, value in styles.items()}}
         options = {"sizing_mode": "stretch_width"} if "position" not in styles else {}
         words = Div(text=text, styles=styles, stylesheets=[self._style], syncable=False, margin=0, **options)
-        return self._inks.host(words)
+        return self.inks.host(words)
 
     def _box(self, name):
         """A plot with its save menu and its notice over it."""
-        return Column(self._plots[name], self._menus[name], self._notices[name], sizing_mode="stretch_both",
-                      css_classes=[f"plot-{name}"], styles={"position": "relative"})
+        return box(name, self._plots[name], self._menus[name], self._notices[name])
 
     def _start_browser_code(self):
         models = {f"{name}_plot": plot for name, plot in self._plots.items()}
@@ -112,7 +113,7 @@ class Board:
     def show(self, overview):
         """Replace all data by an Overview's; the cursor keeps its frequency, at first it takes the highest peak."""
         fresh = columns(overview)
-        with self._hold():
+        with self.in_one():
             self._overview = overview
             self._spine.show(overview, fresh)
             for name, sent in self._sent.items():
@@ -125,7 +126,7 @@ class Board:
 
     def hold(self, overview):
         """Keep an Overview's design in grey in every plot, with a table of what changed; None takes it away."""
-        with self._hold():
+        with self.in_one():
             self._held = overview
             fresh = None if overview is None else columns(overview)
             self._spine.hold(fresh)
@@ -136,22 +137,22 @@ class Board:
 
     def dim(self, text):
         """Dim the plots and say the text over them; None lights them up again."""
-        with self._hold():
+        with self.in_one():
             opacity = "1" if text is None else "0.35"
             dimmed = [*self._plots.values(), self.strip, self._sentence]
             for model in dimmed:
                 if model.styles.get("opacity", "1") != opacity:
                     model.styles = {**model.styles, "opacity": opacity}
             for name, notice in self._notices.items():
-                _set(notice, "" if text is None else LAST_GOOD if name != "level" else
+                set_text(notice, "" if text is None else LAST_GOOD if name != "level" else
                      f'<p class="notice" role="alert">{escape(text)}</p>')
                 notice.visible = text is not None
 
     def set_dark(self, dark):
         """Light or dark colours everywhere."""
-        with self._hold():
-            self._inks.change(theme.palette(dark))
-            self._spine.change_colours(self._inks.palette)
+        with self.in_one():
+            self.inks.change(theme.palette(dark))
+            self._spine.change_colours(self.inks.palette)
 
     def on_key(self, key, callback):
         """Call back (no arguments) when a single key is pressed outside of text entries, unless switched off."""
@@ -170,12 +171,19 @@ class Board:
                            "changes": [changes]}
         self.changes.visible = self._held is not None
 
-    def _hold(self):
+    def in_one(self):
+        """Context in which everything that changes is sent in one message."""
         document = self._spine.level.document
         return hold_events(document) if document else nullcontext()
 
 
-def _set(words, text):
+def box(name, plot, menu, notice):
+    """A plot with its save menu and its notice over it."""
+    return Column(plot, menu, notice, sizing_mode="stretch_both", css_classes=[f"plot-{name}"],
+                  styles={"position": "relative"})
+
+
+def set_text(words, text):
     """Set HTML only where it changes: an unchanged one is drawn anew too."""
     if words.text != text:
         words.text = text
@@ -210,8 +218,8 @@ _GALLERY_HEAD = """<div class="bar" role="group" aria-label="Modes"><b>Modes in 
 <button data-act="next-sheet" aria-label="next modes" tabindex="-1">›</button><span class="menu"></span></div>"""
 
 
-def _menu_html(name):
-    """The small menu of a plot."""
+def menu_html(name):
+    """The small save menu of a plot."""
     forms = "".join(f'<button data-act="save" data-plot="{name}" data-form="{form}">{form.upper()}</button>'
                     for form in ("png", "svg", "csv"))
     pause = '<button data-act="pause" data-word="pause">pause</button>' if name == "section" else ""

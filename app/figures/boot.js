@@ -64,6 +64,7 @@ const redraw = (page, all = true) => {
     drawPhasor(page)
     setSection(page)
     markGallery(page)
+    for (const draw of page.others) draw()
     for (const part of ["strip", "foot", "changes"]) setHtml(m[part], part, m.words.data[part][0] ?? "")
     setWord(m.sentence, "sentence", sentence(now, page.turns, page.f))
     setWord(m.section_menu, "pause", page.playing ? "pause" : "play")
@@ -85,12 +86,15 @@ const reread = (page) => {
   })
 }
 
+// What other pages' scripts share with this one.
+const TOOLS = { viewOf, pointed, toNearest, stepCursor, bracket, put, digits, hertz, setHtml, restCopies, NUMBERS }
+
 const SENT = ["level", "rows", "motion", "shapes", "nodes", "gallery", "moving", "still"]
 const boot = (m) => {
   const held_m = Object.fromEntries(SENT.map((name) => [name, m[`held_${name}`]]))
   const page = { m, held_m, now: null, held: null, turns: { peaks: [], dips: [] }, f: 0, chosen: null, keys: true, pressed: 0,
                  unfolded: false, sheet: 0, pages: 1, tiles: [], phase: 0, moving: null, dressed: new WeakSet(), rested: 0, shown: 0,
-                 playing: !window.matchMedia("(prefers-reduced-motion: reduce)").matches }
+                 others: [], own: [], tools: TOOLS, playing: !window.matchMedia("(prefers-reduced-motion: reduce)").matches }
   for (const name of SENT) {
     m[name].connect(m[name].properties.data.change, () => reread(page))
     held_m[name].connect(held_m[name].properties.data.change, () => reread(page))
@@ -109,10 +113,10 @@ const boot = (m) => {
     m[name].connect(inner_width.change, laidOut)
     m[name].connect(inner_height.change, laidOut)
   }
-  const own = [m.buttons, m.gallery_head, ...["level", "share", "phasor", "section", "gallery"].map((n) => m[`${n}_menu`])]
+  page.own = [m.buttons, m.gallery_head, ...["level", "share", "phasor", "section", "gallery"].map((n) => m[`${n}_menu`])]
   document.addEventListener("click", (event) => {
     const path = event.composedPath(), button = path.find((e) => e instanceof HTMLElement && e.dataset.act)
-    if (button && own.some((model) => path.includes(viewOf(model)?.el))) ACTIONS[button.dataset.act](page, button)
+    if (button && page.own.some((model) => path.includes(viewOf(model)?.el))) ACTIONS[button.dataset.act](page, button)
   })
   document.addEventListener("keydown", (event) => onKey(page, event))
   // Words measured before their typeface had come are measured again.

@@ -9,7 +9,7 @@ import panel as pn
 import param
 from panel.custom import JSComponent
 
-from app.session import samples
+from app.session import PAGES, samples
 
 BESIDE = Path(__file__).parent.parent
 LARGEST_FILE = 64 * 1024          # bytes; the browser looks before it sends, so that the connection lives
@@ -28,6 +28,8 @@ class Header(JSComponent):
     product = param.String()
     design_name = param.String()
     samples = param.List(doc="(file name, words) of the bundled designs")
+    pages = param.List(default=list(PAGES), doc="names of the pages")
+    page = param.String(doc="the page shown")
     held = param.Boolean()
     can_undo = param.Boolean()
     can_redo = param.Boolean()
@@ -42,14 +44,14 @@ class Header(JSComponent):
         self._session = session
         super().__init__(product=product, samples=samples(), margin=0, sizing_mode="stretch_width", **self._seen())
         session.state.param.watch(self._show, ["design", "held", "can_undo", "can_redo", "dirty"])
-        session.param.watch(self._show, ["busy", "sent"])
+        session.param.watch(self._show, ["busy", "page", "sent"])
 
     def _seen(self):
         """What the header shows of the session."""
         state = self._session.state
-        return {"design_name": state.design.name, "held": state.held is not None, "can_undo": state.can_undo,
-                "can_redo": state.can_redo, "dirty": state.dirty, "busy": self._session.busy,
-                "sent": self._session.sent}
+        return {"design_name": state.design.name, "page": self._session.page, "held": state.held is not None,
+                "can_undo": state.can_undo, "can_redo": state.can_redo, "dirty": state.dirty,
+                "busy": self._session.busy, "sent": self._session.sent}
 
     def _show(self, *_):
         """Show the session as it is now."""
@@ -70,6 +72,8 @@ class Header(JSComponent):
             self._session.painted(message["painted"])
         elif "rename" in message:
             state.rename(message["rename"])
+        elif "page" in message:
+            self._session.page = message["page"]
         elif "too_large" in message:
             tell(f"{message['file']} has {message['too_large'] / 1024:.0f} kB; a design file has at most "
                  f"{LARGEST_FILE // 1024} kB. Choose a design file, as “save” writes it.")

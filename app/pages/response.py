@@ -41,9 +41,16 @@ class ResponsePage:
         head = _part("head", strip=board.strip, sentence=board.sentence)
         spine = _part("spine", level=board.level, share=board.share)
         side = _part("side", section=board.section, changes=board.changes, phasor=board.phasor)
-        whole = Column(head, spine, side, _named(board.gallery, "gallery"), _named(board.foot, "foot"),
-                       css_classes=["region-plots"], stylesheets=[PLOTS_CSS], sizing_mode="stretch_both")
-        return pn.pane.Bokeh(whole, css_classes=["region-plots"], margin=0, sizing_mode="stretch_both")
+        gallery = _named(board.gallery, "gallery")
+        self.own = (spine, side, gallery)          # what other pages put their figures in the place of
+        self._whole = Column(head, *self.own, _named(board.foot, "foot"), css_classes=["region-plots"],
+                             stylesheets=[PLOTS_CSS], sizing_mode="stretch_both")
+        return pn.pane.Bokeh(self._whole, css_classes=["region-plots"], margin=0, sizing_mode="stretch_both")
+
+    def add(self, part):
+        """Give another page's part, a Bokeh layout, a place below the strip."""
+        part.stylesheets = [PART_CSS]
+        self._whole.children = [*self._whole.children, part]
 
     def show(self, *events):
         """Show the last good overview, and say in words why a newer design is not shown."""

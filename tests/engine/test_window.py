@@ -222,5 +222,5 @@ def test_moving_the_drive_below_the_last_wall_computes_no_new_window():
 
 
 def test_a_judgement_out_of_bounds_is_refused_in_words():
-    with pytest.raises(engine.InvalidDesign, match="Safety factor .*allowed is 1 to 5"):
+    with pytest.raises(engine.InvalidDesign, match=r"Safety factor .*allowed is 1 to 5"):
         engine.Judgement(safety=0.5)
