@@ -7,6 +7,14 @@ the listener are positive. Inputs and results are frozen dataclasses holding rea
 
 from engine.design import Air, Centre, Design, Drive, Electrodes, Film, Geometry, Listener, Rear
 from engine.designfile import load, save
+from engine.distortion import (
+    CompensatedDrive,
+    Distortion,
+    Intermodulation,
+    compensated_drive,
+    distortion,
+    intermodulation,
+)
 from engine.errors import InvalidDesign, NoRestState, NotConverged
 from engine.limits import Excursion, Judgement, LimitsView, Margin, breakdown_band, excursion, limits_view, margins
 from engine.modes import Modes, modes
@@ -16,8 +24,9 @@ from engine.summary import KeyFigures, Overview, energy_share, key_figures, over
 from engine.window import VoltageWindow, voltage_window
 
 __all__ = [
-    "Air", "Centre", "Design", "Drive", "Electrodes", "Equilibrium", "Excursion", "Film", "Finding", "Geometry",
-    "InvalidDesign", "Judgement", "KeyFigures", "LimitsView", "Listener", "Margin", "Modes", "NoRestState",
-    "NotConverged", "Overview", "Rear", "Response", "VoltageWindow", "breakdown_band", "energy_share", "equilibrium",
-    "excursion", "key_figures", "limits_view", "load", "margins", "modes", "overview", "prepare", "response",
+    "Air", "Centre", "CompensatedDrive", "Design", "Distortion", "Drive", "Electrodes", "Equilibrium", "Excursion",
+    "Film", "Finding", "Geometry", "Intermodulation", "InvalidDesign", "Judgement", "KeyFigures", "LimitsView",
+    "Listener", "Margin", "Modes", "NoRestState", "NotConverged", "Overview", "Rear", "Response", "VoltageWindow",
+    "breakdown_band", "compensated_drive", "distortion", "energy_share", "equilibrium", "excursion",
+    "intermodulation", "key_figures", "limits_view", "load", "margins", "modes", "overview", "prepare", "response",
     "save", "voltage_window"]

@@ -44,7 +44,7 @@ def solve_motion(system, basis, frequency):
     An octave's unknowns are the modes up to twice its upper end and the static answer of everything above them, so
     every mode keeps its contribution at every frequency. Source: DEVELOPERS.md, "Response".
     """
-    reduced = _reduce(system, basis)
+    reduced = reduce(system, basis)
     parts = []
     stop = len(frequency)
     while stop > 0:
@@ -58,7 +58,7 @@ def solve_motion(system, basis, frequency):
 
 
 @dataclass(frozen=True)
-class _Reduced:
+class Reduced:
     """Matrices of the dynamic stiffness on the basis, the loads per volt, and the air's tables behind them."""
 
     real: np.ndarray         # (3, n_basis, n_basis): K + K_rear, D0, M
@@ -67,13 +67,13 @@ class _Reduced:
     static: np.ndarray       # (n_basis, n_line+1): answers at rest to the electrode loads and to a pressure
 
 
-def _reduce(system, basis):
+def reduce(system, basis):
     P = basis.shapes
     v, e = P @ system.volume, P[:, 0]
     behind = system.rear.stiffness*np.outer(v, v)
     K = P @ system.stiffness @ P.T + behind
     loads = system.circuit.loads @ P.T
-    return _Reduced(np.stack([K, P @ system.dissipation @ P.T, (P*system.mass) @ P.T]),
+    return Reduced(np.stack([K, P @ system.dissipation @ P.T, (P*system.mass) @ P.T]),
                     system.spring_loss*np.outer(e, e) + system.rear.loss_factor*behind, loads,
                     np.linalg.solve(K, np.concatenate([loads, v[None]]).T))
 
@@ -98,26 +98,36 @@ def _project(X, n_low, above):
     return out
 
 
+def dynamic_stiffness(system, tables, omega, real, loss, resistance, reactance):
+    """Dynamic stiffness Z (n_freq, n, n) complex, and omega Re(air's impedance) of one side (n_freq, n, n).
+
+    Parameters: tables of the air's load; omega (n_freq,) rad/s; real (3, n*n): K + K_rear, D0, M; loss (1, n*n);
+    resistance, reactance (n_terms, n*n) of the air.
+    """
+    n = int(np.sqrt(real.shape[1]))
+    x = omega*system.frame_radius/system.air.sound_speed
+    S = material.viscous_modulus(omega, *system.film_losses)
+    at = radiation.interpolation(x, tables)
+    # i omega N_s Z = N_s eps rho b^3 omega^2 (i x A - B)
+    per_side = 2*np.pi*system.air.density*system.frame_radius**3*omega**2
+    faces = system.rear.faces*system.air_load
+    one = np.ones_like(omega)
+    Z = np.empty((len(omega), n, n), complex)
+    Z.real = (np.column_stack([one, S.real, -omega**2, -(faces*per_side)[:, None]*at])
+              @ np.concatenate([real, reactance])).reshape(-1, n, n)
+    radiated = ((per_side*x)[:, None]*at) @ resistance
+    Z.imag = (faces*radiated + np.column_stack([S.imag, one]) @ np.concatenate([real[1:2], loss])).reshape(-1, n, n)
+    return Z, radiated.reshape(-1, n, n)
+
+
 def _octave(system, basis, reduced, frequency, n_low):
     """Motion's unit, power, line and charge of one octave whose unknowns start with n_low modes."""
     above = _above(reduced, n_low, len(basis.modes.frequency))
     n = n_low + above.shape[1]
     omega = 2*np.pi*frequency
-    x = omega*system.frame_radius/system.air.sound_speed
-    S = material.viscous_modulus(omega, *system.film_losses)
-    real, loss, resistance, reactance = (_project(X, n_low, above).reshape(-1, n*n) for X in (
+    matrices = (_project(X, n_low, above).reshape(-1, n*n) for X in (
         reduced.real, reduced.constant_loss, *basis.projected))
-    at = radiation.interpolation(x, basis.tables)
-    # i omega N_s Z = N_s eps rho b^3 omega^2 (i x A - B)
-    per_side = 2*np.pi*system.air.density*system.frame_radius**3*omega**2
-    heavy = per_side*system.rear.faces*system.air_load
-    one = np.ones_like(omega)
-    Z = np.empty((len(frequency), n, n), complex)
-    Z.real = (np.column_stack([one, S.real, -omega**2, -heavy[:, None]*at])
-              @ np.concatenate([real, reactance])).reshape(-1, n, n)
-    radiated = at @ resistance
-    Z.imag = ((heavy*x)[:, None]*radiated
-              + np.column_stack([S.imag, one]) @ np.concatenate([real[1:2], loss])).reshape(-1, n, n)
+    Z, radiated = dynamic_stiffness(system, basis.tables, omega, *matrices)
     loads = np.concatenate([reduced.loads[:, :n_low], reduced.loads[:, n_low:] @ above], axis=1)
     each = np.linalg.solve(Z, np.broadcast_to(loads.T, (len(frequency), *loads.T.shape)).astype(complex))
     compliance = loads @ each
@@ -125,6 +135,6 @@ def _octave(system, basis, reduced, frequency, n_low):
     q = (each @ line[..., None])[..., 0]
     # omega^2/2 q^H Re Z q of one side
     parts = np.stack([q.real, q.imag], axis=2)
-    power = omega/2*per_side*x*np.sum((radiated.reshape(-1, n, n) @ parts)*parts, axis=(1, 2))
+    power = omega/2*np.sum((radiated @ parts)*parts, axis=(1, 2))
     unit = np.concatenate([q[:, :n_low], q[:, n_low:] @ above.T], axis=1)
     return unit, power, line, circuit.charge(system.circuit, line, compliance)

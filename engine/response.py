@@ -193,6 +193,11 @@ def prepare():
         radiation.prepare(x_max, n)
 
 
+def basis_for(design, frequency_max):
+    """(system, basis) of a design for frequencies up to frequency_max in Hz; kept for the last few designs."""
+    return _system_and_basis(_mechanical(design), float(frequency_max))
+
+
 @lru_cache(maxsize=4)
 def _motion(design, asked):
     given = np.frombuffer(asked) if isinstance(asked, bytes) else None
@@ -215,10 +220,13 @@ def _check_listener(system, listener):
 
 
 def _transfer(motion, distance, angle):
+    return transfer(motion.system, motion.basis, motion.frequency, distance, angle)
+
+
+def transfer(system, basis, frequency, distance, angle):
     """(n_freq, n_basis) Pa/m: pressure at a point per unit of each basis vector, the air's absorption included."""
-    system = motion.system
-    flow = src.flow(system.source, motion.basis.shapes)
+    flow = src.flow(system.source, basis.shapes)
     T = radiation.listener_transfer(system.source.radius, system.source.height, flow.T,
-                                    2*np.pi*motion.frequency/system.air.sound_speed, distance, angle,
+                                    2*np.pi*frequency/system.air.sound_speed, distance, angle,
                                     system.air.density, system.air.sound_speed)
-    return T*10**(-system.air.absorption(motion.frequency)*distance/20)[:, None]
+    return T*10**(-system.air.absorption(frequency)*distance/20)[:, None]

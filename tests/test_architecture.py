@@ -25,6 +25,7 @@ radiation_tables radiation
 rear
 circuit source linear modes motion
 response window
+harmonic distortion
 limits
 summary
 """.split()
