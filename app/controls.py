@@ -202,10 +202,16 @@ class Controls:
 
     def __init__(self, state):
         self.groups = {name: Group(state, name) for name in shown_fields()}
-        self.judged_by = JudgedBy(state, "judgement")
-        self.judged_by.visible = False
-        self.view = pn.Column(self.judged_by, *self.groups.values(), Band(state, "band"), css_classes=["controls"],
+        self._state, self._judged_by = state, None
+        self.view = pn.Column(*self.groups.values(), Band(state, "band"), css_classes=["controls"],
                               stylesheets=[COLUMN_CSS], margin=0)
+
+    def judge(self, here):
+        """Put what the walls are judged by above the other controls, or take it away."""
+        if here and self._judged_by is None:
+            self._judged_by = JudgedBy(self._state, "judgement")
+        others = [control for control in self.view if control is not self._judged_by]
+        self.view.objects = [self._judged_by, *others] if here else others
 
     def blame(self, key, text):
         """Show a message at one control, and none at the others.

@@ -29,7 +29,7 @@ class LimitsPage:
                 part.visible = not here
             for part in (self.board.window, self.board.electrical, self.board.verdict) if self.board else ():
                 part.visible = here
-        self._response.controls.judged_by.visible = here
+        self._response.controls.judge(here)
         self.show()
 
     def show(self, *events):
