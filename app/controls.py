@@ -55,7 +55,7 @@ class Group(JSComponent):
     _stylesheets: ClassVar = [GROUP_CSS]
 
     def __init__(self, state, group):
-        self._state = state
+        self._state, self._key = state, group
         self._blamed, self._typed, self._answered, self._written = {}, {}, {}, {}
         self._build(group)
         super().__init__(title=group.capitalize(), group=group, open=group not in FOLDED, fields=self._specs(),
@@ -98,7 +98,7 @@ class Group(JSComponent):
         if name not in self._written or self._written[name][0] != value:     # writing a number takes a while
             place = on_slider(field, value) if field.metadata["bounds"] else None
             self._written[name] = value, {"text": value_text(field, value), "place": place,
-                                          "caution": caution_text(f"{self.group}.{name}", value)}
+                                          "caution": caution_text(f"{self._key}.{name}", value)}
         return {**self._written[name][1], "hidden": self._without_effect(name)}
 
     def _value(self, name):

@@ -87,7 +87,7 @@ const reread = (page) => {
 }
 
 // What other pages' scripts share with this one.
-const TOOLS = { viewOf, pointed, toNearest, stepCursor, bracket, put, digits, hertz, setHtml, restCopies, NUMBERS }
+const TOOLS = { viewOf, pointed, toNearest, stepCursor, bracket, put, digits, hertz, setHtml, restCopies, textWidth, NUMBERS }
 
 const SENT = ["level", "rows", "motion", "shapes", "nodes", "gallery", "moving", "still"]
 const boot = (m) => {

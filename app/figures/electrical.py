@@ -113,7 +113,7 @@ class Electrical:
         for line in self.corners:
             line.location = place
         seen = place is not None
-        right = seen and place > (start + end) / 2
+        right = seen and place > start + 0.65 * (end - start)
         self.corner_words.data = {
             "x": [place] * seen, "y": [self.plots["phase"].y_range.end] * seen,
             "text": [f"71 % charged up to {theme.hertz(corner)}" if seen else ""] * seen,

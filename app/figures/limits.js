@@ -21,8 +21,11 @@ const bootLimits = (m, page) => {
     const right = at > start + 0.5 * (end - start)
     const volts = (kv) => `${kv < 0 ? "−" : ""}${t.digits(Math.abs(kv))}`
     const text = `bias ${at.toFixed(2)} kV, drive ${volts(low_kv + moved)} – ${volts(high_kv + moved)} kV`
+    // beside the line, where there is more room, and never outside of the plot
+    const place = m.window_plot.inner_width * (at - start) / (end - start), room = right ? place : m.window_plot.inner_width - place
+    const back = Math.max(0, t.textWidth(text, 12) + 6 - room)
     t.put(m.bias_words, { x: [at], y: [m.window_plot.y_range.start], text: [text], align: [right ? "right" : "left"],
-                          shift: [right ? -6 : 6] })
+                          shift: [right ? back - 6 : 6 - back] })
   }
   const scaled = (value, unit) => {
     const [factor, prefix] = [[1e9, "G"], [1e6, "M"], [1e3, "k"], [1, ""], [1e-3, "m"], [1e-6, "µ"], [1e-9, "n"]]

@@ -7,6 +7,7 @@ from bokeh.models import BoxAnnotation, Image, Line, LinearColorMapper, Segment,
 
 from app import theme
 from app.figures.canvas import bare_plot, gridlines, source, span, text
+from app.figures.marks import Marks
 
 LEFT, RIGHT, TOP = 62, 14, 24        # px of the margins, the same for both plots
 LEVEL_BOTTOM, SHARE_BOTTOM = 18, 32
@@ -48,6 +49,7 @@ class Spine:
         line = inks(Line(x="x", y="level_db", line_width=1.8, line_join="round"), line_color="ink")
         plot.add_glyph(self.held_source, held)
         plot.add_glyph(self.level_source, line)
+        self.marks = Marks(plot, inks)
         text(plot, inks, self.level_labels, text_align="right", text_baseline="middle", x_offset=-8)
         text(plot, inks, self.level_ticks, text_align="center", text_baseline="alphabetic", y_offset=13)
         text(plot, inks, self.level_words, size=12, color="ink", text_align="left", x_offset=-LEFT + 8, y_offset=-10)
@@ -102,6 +104,7 @@ class Spine:
         self._frequency_axis(overview.band, columns.still["n_rows"][0])
         self._level_axis(overview, columns.level)
         self._mark_estimate(overview)
+        self.marks.show(overview)
 
     def hold(self, columns):
         """Draw another design's level in grey; None: nothing."""

@@ -55,12 +55,16 @@ def _states(view):
         at = state.frequency or (None,) * 3
         shown = (_cell(f"{digits(state.peak_field / 1e6)} V/µm", percent(state.peak_field / limit), at[0]),
                  _cell(quantity(state.least_stress, "Pa"), "", at[1]),
-                 _cell("pulls in" if state.stroke is None else quantity(state.stroke, "m", 2), "", at[2]))
+                 _cell(_stroke(state.stroke), "", at[2]))
         rows += f'<tr><th scope="row">{name}</th>' + "".join(f"<td>{cell}</td>" for cell in shown) + "</tr>"
     head = "".join(f'<th scope="col">{word}</th>' for word in ("", "peak field", "least stress", "stroke"))
     return ("<h3>Field, part of breakdown, stress, stroke</h3><p>At rest, at the peak of a drive slow against the "
             "resonances, and at the worst frequency in the band.</p>"
             f"<table><thead><tr>{head}</tr></thead><tbody>{rows}</tbody></table>")
+
+
+def _stroke(stroke):
+    return "pulls in" if stroke is None else "0" if stroke == 0 else quantity(stroke, "m", 2)
 
 
 def _cell(value, more, frequency):
