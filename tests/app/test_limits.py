@@ -29,9 +29,10 @@ from engine.statics import Finding
 FLOAT32 = float(np.finfo(np.float32).eps)
 
 
-def viewed(design, judgement=Judgement()):
+def viewed(design, judgement=None):
     seen = engine.overview(design, DEFAULT_BAND)
-    return engine.limits_view(design, seen.response, seen.excursion, seen.key_figures.mean_level_db, judgement)
+    return engine.limits_view(design, seen.response, seen.excursion, seen.key_figures.mean_level_db,
+                              judgement or Judgement())
 
 
 @pytest.fixture(scope="module")

@@ -1,7 +1,8 @@
 """Page speed, by hand: ``python tests/benchmarks/bench_page.py`` (a minute; needs Chromium and a quiet machine).
 
 Prints, in milliseconds: slider to painted plots for single steps (p50, p95), lag after the last of a burst of 60 inputs a
-second, the first visitor's p50 while a second one drags, and the seconds from the command to a painted page.
+second, the same on the page of the limits, the first visitor's p50 while a second one drags, and the seconds from the
+command to a painted page.
 """
 
 import os
@@ -25,7 +26,7 @@ FLAGS = ["--no-sandbox", "--disable-gpu", "--disable-background-networking"]
 HELPERS = """() => {
   const deep = (selector, root = document) => [...root.querySelectorAll(selector), ...[...root.querySelectorAll("*")]
     .filter((host) => host.shadowRoot).flatMap((host) => deep(selector, host.shadowRoot))]
-  const source = Bokeh.documents[0].get_model_by_name("level")
+  let source = Bokeh.documents[0].get_model_by_name("level")
   const slider = (key) => deep(`.field-${key} input[type=range]`)[0]
   const move = (node, step) => {
     const to = node.valueAsNumber + step * Number(node.step)
@@ -39,6 +40,7 @@ HELPERS = """() => {
     source.properties.data.change.connect(heard)
   })
   window.bench = {
+    listen(name) { source = Bokeh.documents[0].get_model_by_name(name) },
     async step(key, step) {
       const begun = performance.now()
       const shown = arrived()
@@ -114,6 +116,15 @@ def main():
         print(f"slider to painted plots, ms: {percentiles(alone)}")
         burst = page.evaluate("([key, count, wait]) => bench.burst(key, count, wait)", ["film-thickness", N_BURST, 2000])
         print(f"burst of {N_BURST} inputs at 60 a second: {burst['repaints']} repaints, lag {burst['lag']:.0f} ms")
+        page.locator("button.tab", has_text="Limits").click()
+        page.wait_for_function("Bokeh.documents[0].get_model_by_name('limits')?.data.bias_kv.length > 0")
+        page.evaluate("bench.listen('limits')")
+        print(f"on Limits, ms: bias {percentiles(steps(page, 'drive-bias'))}; "
+              f"a new window each time (prestretch) {percentiles(steps(page, 'film-prestretch'))}")
+        burst = page.evaluate("([key, count, wait]) => bench.burst(key, count, wait)", ["film-thickness", N_BURST, 2000])
+        print(f"burst on Limits: {burst['repaints']} repaints, lag {burst['lag']:.0f} ms")
+        page.locator("button.tab", has_text="Response").click()
+        page.evaluate("bench.listen('level')")
         other = opened(browser, url)
         other.evaluate(HELPERS)
         other.evaluate("() => { window.requestAnimationFrame = () => 0 }")   # its painting would be another machine's
