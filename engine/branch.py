@@ -7,6 +7,7 @@ from engine import mesh as msh
 from engine.errors import NoRestState, NotConverged
 
 MOST_STEPS = 150         # of voltage, before the branch is given up
+DRAWN = 1e-4             # the same where the branch is only to be drawn
 SETTLED = 3e-6           # Newton step, relative to the frame radius, after which the next would be below 1e-10
 
 
@@ -20,7 +21,7 @@ def is_stable(K):
     return True
 
 
-def newton(film, q, voltage, most=12):
+def newton(film, q, voltage, most=12, settled=SETTLED):
     """Plain Newton iteration: (state, tangent), or None where it does not converge in a few steps."""
     for _ in range(most):
         energy, g, K = flm.linearise(film, q, voltage)
@@ -34,7 +35,7 @@ def newton(film, q, voltage, most=12):
         size = np.max(np.abs(step))
         if not size < film.mesh.edges[-1]:
             return None
-        if size < SETTLED*film.mesh.edges[-1]:
+        if size < settled*film.mesh.edges[-1]:
             return q, K
     return None
 
@@ -98,13 +99,13 @@ def unbiased(film):
     return found
 
 
-def follow(film, q, K, start, stop):
+def follow(film, q, K, start, stop, settled=SETTLED):
     """Follow the stable branch from voltage start to stop: (state, tangent, None), or (last, tangent, voltage it ends at)."""
-    *_, (q, K, _, end) = [(q, K, start, None), *march(film, q, K, start, stop)]
+    *_, (q, K, _, end) = [(q, K, start, None), *march(film, q, K, start, stop, settled)]
     return q, K, end
 
 
-def march(film, q, K, start, stop):
+def march(film, q, K, start, stop, settled=SETTLED):
     """Points (state, tangent, voltage, None) of the stable branch from start to stop, where it ends early with the voltage.
 
     Euler predictor in V^2, Newton corrector; a step counts only if the tangent stays positive definite and the
@@ -122,7 +123,7 @@ def march(film, q, K, start, stop):
         near = 0.5*moved + 1e-3*film.mesh.edges[-1]
         voltage = float(np.sqrt(2*(s + step))) if s + step < goal else stop
         with np.errstate(all="ignore"):
-            found = newton(film, q + predicted, voltage, most=6) if moved < film.mesh.edges[-1] else None
+            found = newton(film, q + predicted, voltage, 6, settled) if moved < film.mesh.edges[-1] else None
         if found is not None and np.max(np.abs(found[0] - q - predicted)) <= near and is_stable(found[1]):
             (q, K), s, step = found, s + step, 1.5*step
             yield q, K, voltage, None

@@ -9,14 +9,15 @@ import scipy.linalg
 
 from engine import air, radiation, rear, source, statics
 from engine import film as flm
-from engine.branch import arc, follow, is_stable, march
+from engine.branch import DRAWN, arc, follow, is_stable, march
 from engine.design import Drive, Listener
 from engine.statics import extremes, frozen, peak_voltage
 
 HIGHEST_BIAS = 20e3           # V, the bound of the bias
 N_BIAS, N_MODES = 60, 8
 FIRST_REACH = 100.0           # V
-N_BEYOND = 14                 # points drawn past a turning point
+N_BEYOND = 8                 # points drawn past a turning point
+AIR_EVERY = 8                 # states from one air mass to the next
 LAST_TENSION = 2e-3           # of the unbiased one: what the last stable state of a flat film has left
 N_POLYNOMIALS = 24            # of the air's mass: enough for the lowest modes
 
@@ -96,7 +97,7 @@ def _stable_points(film, path, voltages):
         if known[i] > here:
             q, K, here = path[i][:3]
         if here < V:
-            q, K, end = follow(film, q, K, here, V)
+            q, K, end = follow(film, q, K, here, V, DRAWN)
             V = V if end is None else end
             here = V
         yield q, K, float(V), None
@@ -127,35 +128,49 @@ def _crossing(film, path, value, level):
 
 
 def _collect(design, film, points, n_modes, n_bias, slack, pull_in, breakdown):
-    gas = air.properties(design.air.temperature, design.air.pressure, design.air.relative_humidity)
-    behind = rear.from_design(design, gas)
-    fields = np.array([flm.cauchy_stress(film, q, V)[2].ravel() for q, _, V, _ in points])
+    judged = [flm.cauchy_stress(film, q, V) for q, _, V, _ in points]
     strains = [flm.strain(film, q) for q, *_ in points]
     areas = np.array([(film.area*np.sqrt(e.A*e.B)).ravel() for e in strains])
-    extreme = [extremes(film, q, V) for q, _, V, _ in points]
+    flat = film.areal_capacitance*film.area.ravel()
     return VoltageWindow(
         bias=frozen(np.array([V for _, _, V, _ in points])),
         stable=frozen(np.array([i < n_bias or is_stable(K) for i, (_, K, _, _) in enumerate(points)])),
         centre_height=frozen(np.array([q[0] for q, *_ in points])),
-        peak_field=frozen(np.array([field for _, (field, _) in extreme])),
-        least_stress=frozen(np.array([stress for (stress, _), _ in extreme])),
-        capacitance=frozen(np.array([flm.capacitance(film, q) for q, *_ in points])),
-        field=frozen(fields), area=frozen(areas),
-        frequency=frozen(np.array([_frequencies(design, film, q, K, gas, behind, n_modes) for q, K, _, _ in points])),
+        peak_field=frozen(np.array([field.max() for *_, field in judged])),
+        least_stress=frozen(np.array([min(s1.min(), s2.min()) for s1, s2, _ in judged])),
+        capacitance=frozen(np.array([flat @ (e.A*e.B).ravel() for e in strains])),
+        field=frozen(np.array([field.ravel() for *_, field in judged])), area=frozen(areas),
+        frequency=frozen(_frequencies(design, film, points, n_modes)),
         slack_voltage=slack, pull_in_voltage=pull_in, breakdown_voltage=breakdown)
 
 
-def _frequencies(design, film, q, K, gas, behind, n_modes):
-    """(n_modes,) Hz of the lowest modes in air about a state on the static mesh; imaginary ones at 0."""
+def _frequencies(design, film, points, n_modes):
+    """(n_points, n_modes) Hz of the lowest modes in air about states on the static mesh; imaginary ones at 0.
+
+    The air's mass changes little along the branch: it is computed at every AIR_EVERY-th state and interpolated between.
+    """
+    gas = air.properties(design.air.temperature, design.air.pressure, design.air.relative_humidity)
+    behind = rear.from_design(design, gas)
+    heavy = behind.faces*gas.density*design.air.load
+    known = sorted({*range(0, len(points), AIR_EVERY), len(points) - 1})
+    masses = {i: np.diag(film.mass) + heavy*_air_mass(film, points[i][0]) for i in known}
+    out = np.empty((len(points), n_modes))
+    for i, (q, K, _, _) in enumerate(points):
+        below = i//AIR_EVERY*AIR_EVERY
+        above = min(below + AIR_EVERY, len(points) - 1)
+        share = (i - below)/max(above - below, 1)
+        M = masses[below] if share == 0 else (1 - share)*masses[below] + share*masses[above]
+        if behind.stiffness:
+            s = flm.swept_volume(film, q)[1]
+            K = K + behind.stiffness*np.outer(s, s)
+        squares = scipy.linalg.eigh(K, M, eigvals_only=True, check_finite=False)[:n_modes]
+        out[i] = np.sqrt(np.maximum(squares, 0))/(2*np.pi)
+    return out
+
+
+def _air_mass(film, q):
+    """Low-frequency air mass of one face over the free numbers, per density of air, m3."""
     b = film.mesh.edges[-1]
-    M = np.diag(film.mass)
-    if design.air.load:
-        emitter = source.sample(film, q, film.mesh.order + 6)
-        rows = radiation.projection_matrix(emitter.radius/b, N_POLYNOMIALS)/(2*np.pi*b**2)
-        c = source.flow_projection(emitter, rows)
-        M += behind.faces*gas.density*b**3*(c.T @ (radiation.static_mass_matrix(N_POLYNOMIALS) @ c))
-    if behind.stiffness:
-        s = flm.swept_volume(film, q)[1]
-        K = K + behind.stiffness*np.outer(s, s)
-    squares = scipy.linalg.eigh(K, M, eigvals_only=True, check_finite=False)[:n_modes]
-    return np.sqrt(np.maximum(squares, 0))/(2*np.pi)
+    emitter = source.sample(film, q, film.mesh.order + 6)
+    c = source.flow_projection(emitter, radiation.projection_matrix(emitter.radius/b, N_POLYNOMIALS)/(2*np.pi*b**2))
+    return b**3*(c.T @ (radiation.static_mass_matrix(N_POLYNOMIALS) @ c))
