@@ -11,7 +11,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from engine import film as flm
-from engine import linear
+from engine import linear, radiation
 from engine.modes import Basis
 from engine.motion import dynamic_stiffness, reduce
 
@@ -125,7 +125,8 @@ def problem(system, basis: Basis, omega, theta):
     audible = omega[:, 1:] <= top
     flat = np.where(audible, omega[:, 1:], top).ravel()
     matrices = (X.reshape(-1, n_basis**2) for X in (reduced.real, reduced.constant_loss, *basis.projected))
-    Z, _ = dynamic_stiffness(system, basis.tables, flat, *matrices)
+    at = radiation.interpolation(flat*system.frame_radius/system.air.sound_speed, basis.tables)
+    Z, _ = dynamic_stiffness(system, flat, at, *matrices)
     source = np.zeros(len(flat), complex)
     if len(free):
         size = n_basis + len(free)

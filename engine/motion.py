@@ -6,6 +6,7 @@ import numpy as np
 
 from engine import circuit, linear, material, radiation
 from engine.modes import Basis
+from engine.radiation_tables import chebyshev_matrix, chebyshev_nodes
 from engine.statics import frozen
 
 GRID_POINTS = 280               # of the even log grid, before refinement at resonances
@@ -88,6 +89,8 @@ def _above(reduced, n_low, n_modes):
 
 def _project(X, n_low, above):
     """(..., n, n) of matrices (..., n_basis, n_basis) on the first n_low vectors and the columns above them."""
+    if n_low + above.shape[1] == X.shape[-1]:
+        return X
     right = X[..., n_low:] @ above
     n = n_low + above.shape[1]
     out = np.empty((*X.shape[:-2], n, n))
@@ -98,16 +101,15 @@ def _project(X, n_low, above):
     return out
 
 
-def dynamic_stiffness(system, tables, omega, real, loss, resistance, reactance):
+def dynamic_stiffness(system, omega, at, real, loss, resistance, reactance):
     """Dynamic stiffness Z (n_freq, n, n) complex, and omega Re(air's impedance) of one side (n_freq, n, n).
 
-    Parameters: tables of the air's load; omega (n_freq,) rad/s; real (3, n*n): K + K_rear, D0, M; loss (1, n*n);
-    resistance, reactance (n_terms, n*n) of the air.
+    Parameters: omega (n_freq,) rad/s; at (n_freq, n_terms): weights of the air's tables; real (3, n*n): K + K_rear, D0,
+    M; loss (1, n*n); resistance, reactance (n_terms, n*n) of the air.
     """
     n = int(np.sqrt(real.shape[1]))
     x = omega*system.frame_radius/system.air.sound_speed
     S = material.viscous_modulus(omega, *system.film_losses)
-    at = radiation.interpolation(x, tables)
     # i omega N_s Z = N_s eps rho b^3 omega^2 (i x A - B)
     per_side = 2*np.pi*system.air.density*system.frame_radius**3*omega**2
     faces = system.rear.faces*system.air_load
@@ -120,14 +122,30 @@ def dynamic_stiffness(system, tables, omega, real, loss, resistance, reactance):
     return Z, radiated.reshape(-1, n, n)
 
 
+def _local_tables(basis, x):
+    """Weights (n_freq, n) and the air's tables (n, n_basis, n_basis) at n places within the range of x = k b.
+
+    Over an octave the load is a smooth function that a few Chebyshev points carry (it is of exponential type 2 in x);
+    where they are no fewer than the tables' terms, the tables serve as they are.
+    """
+    reach = np.ptp(x)
+    n = int(np.ceil(reach + 4.5*np.cbrt(reach) + 5))
+    if n >= basis.tables.n_terms:
+        return radiation.interpolation(x, basis.tables), *basis.projected
+    places, to_coefficients = chebyshev_nodes(n)
+    at = radiation.interpolation(x.min() + reach*places, basis.tables)
+    weights = chebyshev_matrix((x - x.min())/max(reach, 1e-300), n) @ to_coefficients
+    return weights, *((at @ t.reshape(len(t), -1)).reshape(n, *t.shape[1:]) for t in basis.projected)
+
+
 def _octave(system, basis, reduced, frequency, n_low):
     """Motion's unit, power, line and charge of one octave whose unknowns start with n_low modes."""
     above = _above(reduced, n_low, len(basis.modes.frequency))
     n = n_low + above.shape[1]
     omega = 2*np.pi*frequency
-    matrices = (_project(X, n_low, above).reshape(-1, n*n) for X in (
-        reduced.real, reduced.constant_loss, *basis.projected))
-    Z, radiated = dynamic_stiffness(system, basis.tables, omega, *matrices)
+    at, *air = _local_tables(basis, omega*system.frame_radius/system.air.sound_speed)
+    matrices = (_project(X, n_low, above).reshape(-1, n*n) for X in (reduced.real, reduced.constant_loss, *air))
+    Z, radiated = dynamic_stiffness(system, omega, at, *matrices)
     loads = np.concatenate([reduced.loads[:, :n_low], reduced.loads[:, n_low:] @ above], axis=1)
     each = np.linalg.solve(Z, np.broadcast_to(loads.T, (len(frequency), *loads.T.shape)).astype(complex))
     compliance = loads @ each
