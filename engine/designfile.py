@@ -173,21 +173,28 @@ def _design(tables):
     for key in tables:
         if key not in (*GROUPS, "name", "note"):
             raise invalid(f"{key} is not known here{nearest(key, (*GROUPS, 'name', 'note'))}", key)
+    for key, cls in GROUPS.items():
+        _check_known(key, cls, tables.get(key, {}))
     if "name" not in tables:
         raise invalid("name is missing. Add a line such as name = \"Bench back\" at the top.", "name")
     groups = {key: _group(key, cls, tables.get(key, {})) for key, cls in GROUPS.items()}
     return Design(name=tables["name"], note=tables.get("note", ""), **groups)
 
 
-def _group(key, cls, table):
-    """One group made of its table."""
+def _check_known(key, cls, table):
+    """Raise InvalidDesign for the first key of a group's table that is none of its fields: a misspelt one is missing too."""
     if not isinstance(table, dict):
         raise invalid(f"{key} is a value, but must be a table. Write [{key}] and its values below.", key)
-    known = {field.name: field for field in fields(cls)}
+    known = [field.name for field in fields(cls)]
     for name in table:
         if name not in known:
             raise invalid(f"{key}.{name} is not known{nearest(f'{key}.{name}', paths())} In [{key}] stand "
                           f"{', '.join(known)}.", f"{key}.{name}")
+
+
+def _group(key, cls, table):
+    """One group made of its table."""
+    known = {field.name: field for field in fields(cls)}
     for name, field in known.items():
         required = field.metadata["required"]
         if isinstance(required, tuple):
