@@ -9,7 +9,7 @@ from engine.modes import Basis
 from engine.radiation_tables import chebyshev_matrix, chebyshev_nodes
 from engine.statics import frozen
 
-GRID_POINTS = 280               # of the even log grid, before refinement at resonances
+GRID_POINTS = 240               # of the even log grid, before refinement at resonances
 FEW_MODES = 14                  # below so many unknowns another octave costs more than it saves
 
 
@@ -31,7 +31,7 @@ def frequency_grid(basis, low, high, n_points=GRID_POINTS):
     even = np.geomspace(low, high, n_points)
     f, zeta = basis.refined, basis.modes.damping_ratio
     narrow = (f > low) & (f < high) & (zeta < 2.5*np.log(high/low)/n_points)
-    offsets = np.array([-3.0, -1.5, -0.8, -0.35, 0.0, 0.35, 0.8, 1.5, 3.0])
+    offsets = np.array([-1.8, -0.8, -0.35, 0.0, 0.35, 0.8, 1.8])
     extra = (f[narrow, None]*(1 + zeta[narrow, None]*offsets)).ravel()
     every = np.unique(np.concatenate([even, extra[(extra > low) & (extra < high)]]))
     keep = np.append(True, np.diff(np.log(every)) > 1e-6)

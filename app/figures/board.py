@@ -64,7 +64,7 @@ class Board:
 
     def _place(self):
         self.strip, self.foot, self.changes = (self.html(f'<div data-word="{name}"></div>') for name in WORDS)
-        self._sentence = self.html('<span data-word="sentence" role="status"></span>')
+        self._sentence = self.html('<div data-word="sentence" role="status"></div>')
         self._sentence.css_classes = ["sentence"]
         self._buttons = self.html(_BUTTONS)
         self._buttons.sizing_mode = None

@@ -11,11 +11,20 @@ const viewOf = (model) => Bokeh.index.find_one(model)
 const onScreen = (plot) => (viewOf(plot)?.el.getClientRects().length ?? 0) > 0
 // Words in the HTML beside the plots are written straight into it: changing a Div's text instead would have Bokeh build
 // and lay out much of the page anew. Only where a height changes the plots must take their new places.
+// The sentence keeps the height it once had, so that the plots do not jump as it turns from one line to two.
+const KEEPS_HEIGHT = ["sentence"]
 const write = (model, key, change) => {
   const element = viewOf(model)?.shadow_el.querySelector(`[data-word="${key}"]`)
   if (!element) return
-  const before = element.offsetHeight
-  if (change(element) && element.offsetHeight !== before) setTimeout(() => viewOf(model)?.invalidate_layout())
+  const before = element.offsetHeight, keeps = KEEPS_HEIGHT.includes(key) && element.dataset.width === String(element.offsetWidth)
+  if (!keeps) element.style.minHeight = ""
+  if (!change(element)) return
+  const after = element.offsetHeight
+  if (KEEPS_HEIGHT.includes(key)) {
+    element.dataset.width = element.offsetWidth
+    element.style.minHeight = `${after}px`
+  }
+  if (after !== before) setTimeout(() => viewOf(model)?.invalidate_layout())
 }
 const setWord = (model, key, text, hidden = false) => write(model, key, (element) => {
   if (element.textContent === text && element.hidden === hidden) return false
