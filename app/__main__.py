@@ -46,7 +46,7 @@ def main(argv=None):
         served = server.Served(design, options.address, options.port, DEFAULT_PORT)
     except server.CannotListen as error:
         return _refuse(str(error))
-    threading.Thread(target=getattr(engine, "prepare", int), name="tables", daemon=True).start()
+    threading.Thread(target=engine.prepare, name="tables", daemon=True).start()
     return served.run(browser=not options.no_browser)
 
 
