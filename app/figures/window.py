@@ -10,6 +10,7 @@ from app.figures.canvas import bare_plot, gridlines, source, span, text
 
 LEFT, RIGHT, TOP, SMALL_TOP, BOTTOM = 58, 14, 74, 22, 32     # px of the margins
 WALLS = ("slack", "pull-in")
+WORDS_ROOM = 0.15             # of the heights' range
 ROWS = {"breakdown": -6, "slack": -20, "pull-in": -34}       # px of each wall's words above the plot
 TITLE = -56
 BAND_ALPHA, SWING_ALPHA = 0.16, 0.14
@@ -98,7 +99,8 @@ class Window:
         at = rounds(0, end, 6)
         heights = window.centre_height * 1e3
         low, high = nice_range(float(heights.min()), float(heights.max()))
-        self._frame(self.height, at, rounds(low, high, 5), low, high, "Rest height of the centre, mm",
+        room = WORDS_ROOM*(high - low)              # under the curve, for the words of the bias
+        self._frame(self.height, at, rounds(low, high, 5), low - room, high, "Rest height of the centre, mm",
                     [theme.digits(v) for v in rounds(low, high, 5)])
         found = window.frequency[window.frequency > 0]
         least = max(float(found.min()), float(found.max()) / 300) if len(found) else 10.0
