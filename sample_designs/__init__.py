@@ -1,0 +1,1 @@
+"""The bundled designs, installed with the package."""
