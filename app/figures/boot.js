@@ -43,9 +43,19 @@ const setHtml = (model, key, html) => write(model, key, (element) => {
 // fifth of the time of a repaint. Those four are told to rest; a browser test sees when Bokeh changes.
 const COPIES = ["decimated_glyph", "selection_glyph", "nonselection_glyph", "muted_glyph"]
 const WORK = ["set_data", "set_visuals", "after_visuals", "after_lazy_visuals", "map_data"]
+// Nor do these plots take colours or widths from style sheets, for which Bokeh asks the browser at every stroke.
+const plainInks = (visuals) => {
+  for (const visual of visuals ?? []) {
+    let holder = Object.getPrototypeOf(visual)
+    while (holder && !Object.hasOwn(holder, "_get_css_value")) holder = Object.getPrototypeOf(holder)
+    if (holder) holder._get_css_value = () => ""
+  }
+}
 const restCopies = (view) => {
   let rested = 0
+  plainInks(view.visuals)
   for (const renderer of view.renderer_views.values()) {
+    plainInks(renderer.glyph?.visuals)
     for (const name of COPIES) {
       if (!WORK.every((work) => typeof renderer[name]?.[work] === "function")) continue
       for (const work of WORK) renderer[name][work] = () => {}
