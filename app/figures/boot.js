@@ -138,6 +138,8 @@ const boot = (m) => {
     if (button && page.own.some((model) => path.includes(viewOf(model)?.el))) ACTIONS[button.dataset.act](page, button)
   })
   document.addEventListener("keydown", (event) => onKey(page, event))
+  // While a control moves, its result has the browser to itself: the section rests.
+  document.addEventListener("input", () => { page.shown = performance.now() }, true)
   // Words measured before their typeface had come are measured again.
   document.fonts.addEventListener("loadingdone", () => {
     for (const model of Object.values(m)) if (model.data && "text" in model.data) model.change.emit()

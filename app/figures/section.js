@@ -1,6 +1,6 @@
 // Section to scale at rest, moving; millimetres, both sides mirrored.
 const PERIOD_MS = 1600, FRAME_MS = 40      // of one drawn period; between frames
-const BUSY_MS = 250                        // after new data only those paint it: a drag needs the time
+const BUSY_MS = 400                        // after new data only those paint it: a drag needs the time
 const ROOM = 0.14, STEEPEST = 0.7          // drawn motion over frame radius; drawn strain along the film, below folding
 
 const mirror = (radius, height, x, y) => {

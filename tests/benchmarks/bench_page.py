@@ -31,7 +31,7 @@ HELPERS = """() => {
   const move = (node, step) => {
     const to = node.valueAsNumber + step * Number(node.step)
     node.value = to
-    node.dispatchEvent(new Event("input", {bubbles: true}))
+    node.dispatchEvent(new Event("input", {bubbles: true, composed: true}))
     return to
   }
   const painted = () => new Promise((done) => requestAnimationFrame(() => requestAnimationFrame(() => done(performance.now()))))
