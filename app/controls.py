@@ -124,15 +124,16 @@ class Group(JSComponent):
         """A person's move: to the state, or a message at the field; the text or place is set right either way."""
         name = move["name"]
         self._answered[name] = move["n"]
-        try:
-            self._set(name, move)
-        except ValueError as error:
-            self._typed = {name: str(error)}
-        else:
-            self._typed = {}
-        self._show()
-        if move["released"]:
-            self._state.release()
+        with pn.io.hold():          # one message to the browser, not one for each thing that changes
+            try:
+                self._set(name, move)
+            except ValueError as error:
+                self._typed = {name: str(error)}
+            else:
+                self._typed = {}
+            self._show()
+            if move["released"]:
+                self._state.release()
 
     def _set(self, name, move):
         """Set the state's value from a move; ValueError if what was typed is no value."""

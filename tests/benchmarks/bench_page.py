@@ -18,7 +18,7 @@ import numpy as np
 from playwright.sync_api import sync_playwright
 
 ROOT = Path(__file__).parent.parent.parent
-N_STEPS, N_BURST = 60, 120
+N_STEPS, N_BURST, REST_MS = 60, 120, 250
 CHROMIUM = next(filter(None, map(shutil.which, ("chromium", "chromium-browser", "google-chrome"))), None)
 FLAGS = ["--no-sandbox", "--disable-gpu", "--disable-background-networking"]
 
@@ -92,8 +92,11 @@ def opened(browser, url):
 
 def steps(page, key="film-prestretch"):
     """Times of single steps, each from rest, none to a design already computed."""
-    return np.array([page.evaluate("([key, step]) => bench.step(key, step)", [key, 1 if i % 80 < 40 else -1.5])
-                     for i in range(N_STEPS)])
+    times = []
+    for i in range(N_STEPS):
+        times.append(page.evaluate("([key, step]) => bench.step(key, step)", [key, 1 if i % 80 < 40 else -1.5]))
+        page.wait_for_timeout(REST_MS)
+    return np.array(times)
 
 
 def percentiles(times):

@@ -214,7 +214,7 @@ def test_the_highest_peaks_are_compared(sample):
     level = response.level_db
     maxima = 1 + np.flatnonzero((level[1:-1] > level[:-2]) & (level[1:-1] > level[2:]))
     highest = response.frequency[maxima[np.argsort(-level[maxima])[:5]]]
-    assert np.all(np.min(np.abs(highest[:, None]/np.array(PEAKS[name]) - 1), axis=1) < 0.02)      # the grid steps by 2 % where no peak is sharp
+    assert np.all(np.min(np.abs(highest[:, None]/np.array(PEAKS[name]) - 1), axis=1) < 0.02)    # the grid's step
 
 
 def test_needle_peaks_in_frequency_and_width(sample):
