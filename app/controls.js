@@ -5,6 +5,40 @@ function make(tag, properties = {}, ...children) {
   return node
 }
 
+// The way to the server and back, one for the page. Moves go out together, the newest of each control, as soon as the
+// ones before were answered; an answer says what groups of controls show.
+const PATIENCE = 1000       // ms an answer is waited for
+function theLine() {
+  const document = window.Bokeh.documents[0]
+  const asked = document.get_model_by_name("asked"), answers = document.get_model_by_name("answers")
+  if (!asked || !answers) return null
+  if (answers.line) return answers.line
+  const line = answers.line = {pending: new Map(), out: null, count: 0, groups: new Map(), latest: {}}
+  const go = () => {
+    clearTimeout(line.out)
+    line.out = null
+    if (line.pending.size === 0) return
+    const moves = [...line.pending.values()]
+    line.pending.clear()
+    line.out = setTimeout(go, PATIENCE)
+    line.count += 1
+    asked.data = {json: [JSON.stringify({moves})], count: [`moves ${line.count}`]}
+  }
+  line.send = (move) => {
+    line.pending.set(`${move.group}.${move.name}`, move)
+    if (line.out === null) go()
+  }
+  answers.connect(answers.properties.data.change, () => {
+    const {shown, answered} = JSON.parse(answers.data.json[0])
+    for (const [group, now] of Object.entries(shown)) {
+      line.latest[group] = now
+      line.groups.get(group)?.(now)
+    }
+    if (answered) go()
+  })
+  return line
+}
+
 // The inputs of one field; `move` sends what a person did, `show` shows what the server says.
 const kinds = {
   number(spec, id, move) {
@@ -77,7 +111,7 @@ export function render({model}) {
     const move = (what) => {
       n += 1
       last.n = n
-      model.moved = {name: spec.name, n, ...what}
+      theLine().send({group: model.group, name: spec.name, n, ...what})
     }
     const id = `entry-${spec.name}`
     const input = kinds[spec.kind](spec, id, move)
@@ -106,8 +140,8 @@ export function render({model}) {
     fold.setAttribute("aria-expanded", String(model.open))
     body.hidden = !model.open
   }
-  const show = () => {
-    for (const [name, now] of Object.entries(model.shown)) {
+  const show = (shown) => {
+    for (const [name, now] of Object.entries(shown)) {
       const {field, input, caution, message, last} = fields.get(name)
       field.hidden = now.hidden
       field.classList.toggle("wrong", now.message !== "")
@@ -118,8 +152,10 @@ export function render({model}) {
     }
   }
   model.on("open", show_fold)
-  model.on("shown", show)
+  model.on("shown", () => show(model.shown))
   show_fold()
-  show()
+  const line = theLine()
+  line?.groups.set(model.group, show)
+  show(line?.latest[model.group] ?? model.shown)
   return make("section", {}, make("h2", {}, fold), body)
 }

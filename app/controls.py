@@ -1,15 +1,17 @@
 """Sliders with typed entry, and the other controls, generated from the design's field metadata.
 
 A group of controls is one component: its browser code (controls.js) draws native inputs, so that a page opens fast and
-every input is the browser's own for pointer, keyboard and screen readers. What a person does comes back as the property
-`moved`, which the server coalesces: while a slider moves fast, the latest place wins.
+every input is the browser's own for pointer, keyboard and screen readers. What a person does comes in as moves, the newest
+of each control, as soon as the last ones were answered: while a slider moves fast, the latest place wins.
 """
 
+import json
 from pathlib import Path
 from typing import ClassVar
 
 import panel as pn
 import param
+from bokeh.models import ColumnDataSource
 from panel.custom import JSComponent
 
 from app.state import BANDS, judged_fields, shown_fields
@@ -49,19 +51,23 @@ class Group(JSComponent):
     open = param.Boolean(default=True)
     fields = param.List(doc="what does not change of each field: name, kind, label, meaning, scale, options")
     shown = param.Dict(doc="field name -> text, place, value, message, hidden, n (of the last move answered)")
-    moved = param.Dict(doc="the person's last move: name, n, and place, text or value; whether the control was let go")
-
     _esm = HERE / "controls.js"
     _stylesheets: ClassVar = [GROUP_CSS]
 
     def __init__(self, state, group):
         self._state, self._key = state, group
         self._blamed, self._typed, self._answered, self._written = {}, {}, {}, {}
+        self._tell = None            # where `shown` goes once the page is alive: not through Panel
         self._build(group)
         super().__init__(title=group.capitalize(), group=group, open=group not in FOLDED, fields=self._specs(),
                          shown=self._now(), css_classes=["group", f"group-{group}"], margin=0,
                          sizing_mode="stretch_width")
-        self.param.watch(lambda event: self._take(event.new), "moved")
+
+    def go_live(self, tell):
+        """Tell what the fields show by ``tell(group, shown)`` from now on."""
+        self._tell, self._told = tell, self._now()
+        if self._told != self.shown:
+            tell(self.group, self._told)
 
     def say(self, name, text):
         """Show a message at one field (None: at none), and none at the others."""
@@ -118,22 +124,33 @@ class Group(JSComponent):
 
     def _show(self):
         """Send what each field shows."""
-        self.shown = self._now()
+        if self._tell is None:
+            self.shown = self._now()
+        else:
+            now = self._now()
+            if now != self._told:
+                self._told = now
+                self._tell(self.group, now)
 
-    def _take(self, move):
-        """A person's move: to the state, or a message at the field; the text or place is set right either way."""
+    def take(self, move):
+        """A person's move: to the state, or a message at the field; the text or place is set right either way.
+
+        Parameters
+        ----------
+        move : dict
+            name, n (number of the move), place, text or value, released (whether the control was let go).
+        """
         name = move["name"]
         self._answered[name] = move["n"]
-        with pn.io.hold():          # one message to the browser, not one for each thing that changes
-            try:
-                self._set(name, move)
-            except ValueError as error:
-                self._typed = {name: str(error)}
-            else:
-                self._typed = {}
-            self._show()
-            if move["released"]:
-                self._state.release()
+        try:
+            self._set(name, move)
+        except ValueError as error:
+            self._typed = {name: str(error)}
+        else:
+            self._typed = {}
+        self._show()
+        if move["released"]:
+            self._state.release()
 
     def _set(self, name, move):
         """Set the state's value from a move; ValueError if what was typed is no value."""
@@ -194,7 +211,7 @@ class JudgedBy(Group):
 
 
 class Controls:
-    """The column of all controls.
+    """The column of all controls. ``answers`` is the source in which the browser is told what they show.
 
     Parameters
     ----------
@@ -203,14 +220,28 @@ class Controls:
 
     def __init__(self, state):
         self.groups = {name: Group(state, name) for name in shown_fields()}
-        self._state, self._judged_by = state, None
-        self.view = pn.Column(*self.groups.values(), Band(state, "band"), css_classes=["controls"],
-                              stylesheets=[COLUMN_CSS], margin=0)
+        self._all = {**self.groups, "band": Band(state, "band")}
+        self._state, self._judged_by, self._live = state, None, False
+        self._news, self._answering = {}, False
+        self.answers = ColumnDataSource(data={"json": []}, name="answers", syncable=False)
+        self.view = pn.Column(*self._all.values(), css_classes=["controls"], stylesheets=[COLUMN_CSS], margin=0)
+
+    def connect(self, inbox):
+        """Take a person's moves from an app.wire.Inbox."""
+        inbox.on("moves", self._take)
+
+    def go_live(self):
+        """The browser has the controls: from now on what they show goes by the short way."""
+        self._live = True
+        for group in self._all.values():
+            group.go_live(self._hear)
 
     def judge(self, here):
         """Put what the walls are judged by above the other controls, or take it away."""
         if here and self._judged_by is None:
-            self._judged_by = JudgedBy(self._state, "judgement")
+            self._judged_by = self._all["judgement"] = JudgedBy(self._state, "judgement")
+            if self._live:
+                self._judged_by.go_live(self._hear)
         others = [control for control in self.view if control is not self._judged_by]
         self.view.objects = [self._judged_by, *others] if here else others
 
@@ -226,3 +257,26 @@ class Controls:
         at, _, name = (key or "").partition(".")
         for group, controls in self.groups.items():
             controls.say(name if group == at else None, text)
+
+    def _take(self, moves):
+        """Take moves and answer them all at once, whatever becomes of them."""
+        self._answering = True
+        try:
+            for move in moves:
+                self._all[move["group"]].take(move)
+        finally:
+            self._answering = False
+            self._answer(answered=True)
+
+    def _hear(self, group, shown):
+        """What a group shows now: told with the answer under way, or soon, together with what else changes now."""
+        soon = not self._news and not self._answering
+        self._news[group] = shown
+        if soon and self.answers.document is not None:
+            self.answers.document.add_next_tick_callback(self._answer)
+
+    def _answer(self, answered=False):
+        """Tell the browser what changed."""
+        if self._news or answered:
+            self.answers.data = {"json": [json.dumps({"shown": self._news, "answered": answered})]}
+            self._news = {}

@@ -145,10 +145,6 @@ export function render({model, el}) {
   model.on("remove", () => document.removeEventListener("keydown", on_key, true))
 
   // ---- what the server says
-  model.on("sent", () => {
-    const count = model.sent
-    requestAnimationFrame(() => requestAnimationFrame(() => send({painted: count})))
-  })
   const show = () => {
     if (el.getRootNode().activeElement !== name && name.getRootNode().activeElement !== name) { name.value = model.design_name }
     document.title = `${model.design_name} · ${model.product}`

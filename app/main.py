@@ -59,6 +59,7 @@ def page(design):
     frame.param.watch(lambda event: response.set_dark(event.new), "dark_theme")
     session.start()
     pn.state.onload(session.connected)
+    pn.state.onload(response.controls.go_live)
     return frame
 
 

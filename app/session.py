@@ -44,7 +44,6 @@ class Session(param.Parameterized):
     limits = param.Parameter(doc="LimitsView of the last design whose limits could be computed, or None")
     limits_fault = param.String(default="", doc="why the newest design's limits are not shown, or nothing")
     busy = param.Boolean(default=False, doc="whether a newer design than the one shown is being computed")
-    sent = param.Integer(default=0, doc="how many overviews have been published; the browser answers each with `painted`")
     problem = param.ClassSelector(class_=Problem, allow_None=True, doc="why the newest design is not shown, or None")
 
     def __init__(self, state, document=None, updater=None, limits_updater=None):
@@ -78,10 +77,9 @@ class Session(param.Parameterized):
             self._in_document(take, outcome)
         self._waiting = {}
 
-    def painted(self, count):
-        """The browser has painted so many overviews: the next may come."""
-        if count >= self.sent:
-            self._painted.set()
+    def painted(self):
+        """The browser has painted the last overview: the next may come."""
+        self._painted.set()
 
     async def _browser_ready(self):
         """Wait until the browser has painted what it was sent, so that results never queue up there."""
@@ -165,7 +163,7 @@ class Session(param.Parameterized):
         values = {"busy": (self.state.design, self.state.band) != outcome.wish and self.state.invalid is None}
         failure = outcome.failure
         if failure is None:
-            values.update(overview=outcome.result, sent=self.sent + 1)
+            values.update(overview=outcome.result)
             self._painted.clear()
         if self.state.invalid is None:
             values["problem"] = failure and Problem(failure.text, failure.key or self.state.touched, failure.kind)

@@ -84,9 +84,11 @@ class Updater:
         """Ask for a computation; an earlier wish that has not begun is dropped."""
         if self._closed:
             return
-        self._wanted = wish
-        if not self.busy:
-            self._task = asyncio.get_running_loop().create_task(self._work())
+        if self.busy:
+            self._wanted = wish
+        else:
+            loop = asyncio.get_running_loop()
+            self._task = loop.create_task(self._work(self._begin(loop, wish)))
 
     def close(self):
         """End: publish nothing more."""
@@ -95,15 +97,22 @@ class Updater:
         if self._task is not None:
             self._task.cancel()
 
-    async def _work(self):
-        """Compute the newest wish, publish, look again."""
+    def _begin(self, loop, wish):
+        """Start a computation at once, not when the event loop next comes round."""
+        return loop.run_in_executor(self._executor, attempt, self._compute, wish)
+
+    async def _work(self, future):
+        """Publish what is being computed, go on with the newest wish, until there is none."""
         loop = asyncio.get_running_loop()
-        while self._wanted is not None:
-            wish, self._wanted = self._wanted, None
-            outcome = await loop.run_in_executor(self._executor, attempt, self._compute, wish)
+        while True:
+            outcome = await future
             if self._ready is not None:
                 await self._ready()
             self._publish(outcome)
+            if self._wanted is None:
+                return
+            newest, self._wanted = self._wanted, None
+            future = self._begin(loop, newest)
 
 
 def attempt(compute, wish):

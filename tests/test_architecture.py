@@ -36,13 +36,14 @@ APP = {
     "server": {"main"},
     "main": {"pages", "session", "theme"},
     "pages": {"figures", "controls", "session"},
-    "figures": {"theme", "engine"},
+    "figures": {"theme", "wire", "engine"},
     "controls": {"state", "values"},
     "session": {"state", "worker"},
     "worker": {"engine"},
     "state": {"engine", "values"},
     "values": {"engine"},
     "theme": set(),
+    "wire": set(),
 }
 ENGINE_FREE_OF = {"param", "panel", "bokeh", "panel_material_ui", "matplotlib", "app"}
 

@@ -1,12 +1,10 @@
 """All figures of the first page and their one cursor: built once, then only data are replaced."""
 
-from contextlib import nullcontext
 from html import escape
 from pathlib import Path
 
 import numpy as np
 from bokeh.models import Column, CustomJS, Div, InlineStyleSheet, Row
-from panel.io import hold as hold_events
 
 from app import theme
 from app.figures.canvas import Inks, source
@@ -16,9 +14,10 @@ from app.figures.phasor import Phasor
 from app.figures.section import Section
 from app.figures.spine import Spine
 from app.figures.strip import changes_html, foot_html, strip_html
+from app.wire import Inbox, Outbox
 
 HERE = Path(__file__).parent
-SCRIPTS = ("format", "reading", "words", "spine", "phasor", "section", "gallery", "save", "cursor", "boot")
+SCRIPTS = ("parcel", "format", "reading", "words", "spine", "phasor", "section", "gallery", "save", "cursor", "boot")
 SENT = ("level", "rows", "motion", "shapes", "nodes", "gallery", "moving", "still")
 WORDS = ("strip", "foot", "changes")
 PLOTS = ("level", "share", "phasor", "section", "gallery")
@@ -55,7 +54,9 @@ class Board:
         self.words = source("words", **{name: [] for name in WORDS})
         self._pressed = source("pressed", key=[], count=[])
         self._pressed.syncable = True
-        self._listeners = {}
+        self._outbox, self.inbox = Outbox(), Inbox()
+        self.inbox.on("painted", self._on_painted)
+        self._listeners, self._painted, self._awaited = {}, None, 0
         self._pressed.on_change("data", self._on_pressed)
         self.level_plot, self.x_range = self._spine.level, self._spine.x_range     # for other pages' figures
         self._place()
@@ -90,7 +91,8 @@ class Board:
         models |= {f"{name}_menu": menu for name, menu in self._menus.items()}
         models |= {**self._sent, **{f"held_{name}": sent for name, sent in self._held_sent.items()}}
         spine, section, gallery = self._spine, self._section, self._gallery
-        models |= {"cursor": self.cursor, "pressed": self._pressed, "sentence": self._sentence,
+        models |= {"parcel": self._outbox.model, "asked": self.inbox.model, "cursor": self.cursor}
+        models |= {"pressed": self._pressed, "sentence": self._sentence,
                    "strip": self.strip, "foot": self.foot, "changes": self.changes, "words": self.words,
                    "buttons": self._buttons, "gallery_head": self._gallery_head,
                    "share_rows": spine.row_words, "share_legend": spine.legend, "share_ticks": spine.row_ticks,
@@ -123,6 +125,7 @@ class Board:
                 self.cursor.data = {"frequency": [first_cursor(overview)]}
             self._compare()
             self.dim(None)
+        self._awaited = self._outbox.count
 
     def hold(self, overview):
         """Keep an Overview's design in grey in every plot, with a table of what changed; None takes it away."""
@@ -163,6 +166,14 @@ class Board:
         if callback:
             callback()
 
+    def on_painted(self, callback):
+        """Call back (no arguments) when the browser has painted the last overview shown."""
+        self._painted = callback
+
+    def _on_painted(self, count):
+        if self._painted and count >= self._awaited:
+            self._painted()
+
     def _compare(self):
         if self._overview is None:
             return
@@ -173,8 +184,7 @@ class Board:
 
     def in_one(self):
         """Context in which everything that changes is sent in one message."""
-        document = self._spine.level.document
-        return hold_events(document) if document else nullcontext()
+        return self._outbox.together()
 
 
 def box(name, plot, menu, notice):

@@ -10,33 +10,39 @@ const PLOTS = Object.keys(LABELS)
 const viewOf = (model) => Bokeh.index.find_one(model)
 const onScreen = (plot) => (viewOf(plot)?.el.getClientRects().length ?? 0) > 0
 // Words in the HTML beside the plots are written straight into it: changing a Div's text instead would have Bokeh build
-// and lay out much of the page anew. Only where a height changes the plots must take their new places.
+// and lay out much of the page anew. Only where a height changes the plots must take their new places; the browser says so
+// by itself, so that nothing is measured, and laid out for it, while words are written.
 // The sentence keeps the height it once had, so that the plots do not jump as it turns from one line to two.
 const KEEPS_HEIGHT = ["sentence"]
-const write = (model, key, change) => {
-  const element = viewOf(model)?.shadow_el.querySelector(`[data-word="${key}"]`)
-  if (!element) return
-  const before = element.offsetHeight, keeps = KEEPS_HEIGHT.includes(key) && element.dataset.width === String(element.offsetWidth)
-  if (!keeps) element.style.minHeight = ""
-  if (!change(element)) return
-  const after = element.offsetHeight
-  if (KEEPS_HEIGHT.includes(key)) {
-    element.dataset.width = element.offsetWidth
-    element.style.minHeight = `${after}px`
+const heights = new ResizeObserver((entries) => {
+  for (const { target } of entries) {
+    const { model, key, height, width } = target.elastovox
+    const now = target.offsetHeight, wide = target.offsetWidth
+    Object.assign(target.elastovox, { height: now, width: wide })
+    if (KEEPS_HEIGHT.includes(key)) target.style.minHeight = wide === width ? `${now}px` : ""
+    if (height !== undefined && now !== height) viewOf(model)?.invalidate_layout()
   }
-  if (after !== before) setTimeout(() => viewOf(model)?.invalidate_layout())
+})
+const write = (model, key, change) => {
+  let element = model.elastovox_words?.[key]
+  if (!element?.isConnected) {
+    element = viewOf(model)?.shadow_el.querySelector(`[data-word="${key}"]`)
+    if (!element) return
+    model.elastovox_words = { ...model.elastovox_words, [key]: element }
+    element.elastovox = { model, key }
+    heights.observe(element)
+  }
+  change(element)
 }
 const setWord = (model, key, text, hidden = false) => write(model, key, (element) => {
-  if (element.textContent === text && element.hidden === hidden) return false
-  element.textContent = text
-  element.hidden = hidden
-  return true
+  if (element.textContent !== text) element.textContent = text
+  if (element.hidden !== hidden) element.hidden = hidden
 })
 // HTML made by the server, where everything that came from a user was escaped.
 const setHtml = (model, key, html) => write(model, key, (element) => {
-  if (element.dataset.shown === html) return false
-  element.innerHTML = element.dataset.shown = html
-  return true
+  if (element.elastovox.html === html) return
+  element.elastovox.html = html
+  element.innerHTML = html
 })
 
 // Bokeh prepares every glyph five times over, four of them for selections and the like, which these plots never have: a
@@ -51,11 +57,38 @@ const plainInks = (visuals) => {
     if (holder) holder._get_css_value = () => ""
   }
 }
+// Words are painted with no more than it takes, all being level, of one line and without outline: Bokeh's own way saves and
+// restores the canvas, reads the typeface and strokes an outline for each of a hundred words, half the time of a repaint.
+const paintPlainly = (glyph) => {
+  if (glyph?.model.type !== "Text" || typeof glyph._paint !== "function" || !glyph.labels || !glyph.anchor_ || !glyph.swidth) return false
+  glyph._paint = function (ctx, indices, data) {
+    const { labels, anchor_, swidth, sheight } = this, { sx, sy, x_offset, y_offset } = { ...this, ...data }
+    ctx.save()
+    ctx.textAlign = "left"
+    ctx.textBaseline = "alphabetic"
+    let font = null
+    for (const i of indices) {
+      const label = labels[i], anchor = anchor_.get(i)
+      const x = sx[i] + x_offset.get(i) - anchor.x * swidth[i], top = sy[i] + y_offset.get(i) - anchor.y * sheight[i]
+      if (!label || !Number.isFinite(x + top)) continue
+      if (label.risen !== label.font) {
+        label.ascent = label._text_line(label._size().metrics).ascent
+        label.risen = label.font
+      }
+      if (font !== label.font) ctx.font = font = label.font
+      ctx.fillStyle = label.color
+      ctx.fillText(label.text, x, top + label.ascent)
+    }
+    ctx.restore()
+  }
+  return true
+}
 const restCopies = (view) => {
   let rested = 0
   plainInks(view.visuals)
   for (const renderer of view.renderer_views.values()) {
     plainInks(renderer.glyph?.visuals)
+    if (paintPlainly(renderer.glyph)) rested += 1
     for (const name of COPIES) {
       if (!WORK.every((work) => typeof renderer[name]?.[work] === "function")) continue
       for (const work of WORK) renderer[name][work] = () => {}
@@ -124,6 +157,7 @@ const boot = (m) => {
     redraw(page)
   }
   m.words.connect(m.words.properties.data.change, () => redraw(page, false))
+  m.parcel.connect(m.parcel.properties.data.change, () => openParcel(page))
   for (const model of [m.strip, m.foot, m.changes, m.sentence, m.gallery_head, m.buttons, m.section_menu]) {   // their words are lost when they are drawn anew
     model.connect(model.change, () => redraw(page))
   }

@@ -1,5 +1,6 @@
 """The slim header every page shares: names, hold, undo, redo, open, save, link, samples."""
 
+import asyncio
 import base64
 import binascii
 from pathlib import Path
@@ -12,6 +13,7 @@ from panel.custom import JSComponent
 from app.session import PAGES, samples
 
 BESIDE = Path(__file__).parent.parent
+BUSY_AFTER = 0.3                  # s: what is computed sooner is not said to be computing
 LARGEST_FILE = 64 * 1024          # bytes; the browser looks before it sends, so that the connection lives
 
 
@@ -35,27 +37,43 @@ class Header(JSComponent):
     can_redo = param.Boolean()
     dirty = param.Boolean()
     busy = param.Boolean()
-    sent = param.Integer(doc="overviews published; the browser answers when it has painted them")
 
     _esm = BESIDE / "header.js"
     _stylesheets: ClassVar = [(BESIDE / "header.css").read_text(encoding="utf-8")]
 
     def __init__(self, session, product):
-        self._session = session
+        self._session, self._later = session, None
         super().__init__(product=product, samples=samples(), margin=0, sizing_mode="stretch_width", **self._seen())
         session.state.param.watch(self._show, ["design", "held", "can_undo", "can_redo", "dirty"])
-        session.param.watch(self._show, ["busy", "page", "sent"])
+        session.param.watch(self._show, "page")
+        session.param.watch(self._show_busy, "busy")
 
     def _seen(self):
         """What the header shows of the session."""
         state = self._session.state
         return {"design_name": state.design.name, "page": self._session.page, "held": state.held is not None,
-                "can_undo": state.can_undo, "can_redo": state.can_redo, "dirty": state.dirty,
-                "busy": self._session.busy, "sent": self._session.sent}
+                "can_undo": state.can_undo, "can_redo": state.can_redo, "dirty": state.dirty}
 
     def _show(self, *_):
         """Show the session as it is now."""
         self.param.update(**self._seen())
+
+    def _show_busy(self, *_):
+        """Say that something is being computed, once it takes long enough to be noticed."""
+        if self._later is not None:
+            self._later.cancel()
+            self._later = None
+        if self._session.busy:
+            self._later = asyncio.get_running_loop().call_later(BUSY_AFTER, self._say_busy, pn.state.curdoc)
+        elif self.busy:
+            self.busy = False
+
+    def _say_busy(self, document):
+        """The time is over."""
+        if document is None:
+            self.busy = self._session.busy
+        else:
+            document.add_next_tick_callback(lambda: self.param.update(busy=self._session.busy))
 
     def _handle_msg(self, message):
         """Do what the browser asks; a refusal (InvalidDesign is a ValueError) is told in words."""
@@ -68,9 +86,7 @@ class Header(JSComponent):
     def _do(self, message):
         """One request of the browser."""
         state = self._session.state
-        if "painted" in message:
-            self._session.painted(message["painted"])
-        elif "rename" in message:
+        if "rename" in message:
             state.rename(message["rename"])
         elif "page" in message:
             self._session.page = message["page"]

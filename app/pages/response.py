@@ -27,6 +27,8 @@ class ResponsePage:
         self.session = session
         self.controls = Controls(session.state)
         self.board = Board(dark)
+        self.board.on_painted(session.painted)
+        self.controls.connect(self.board.inbox)
         self.view = pn.Column(self.controls.view, self.plots(), css_classes=["page"], stylesheets=[PAGE_CSS], margin=0,
                               sizing_mode="stretch_both")
         session.param.watch(self.show, ["overview", "problem"])
@@ -43,8 +45,9 @@ class ResponsePage:
         side = _part("side", section=board.section, changes=board.changes, phasor=board.phasor)
         gallery = _named(board.gallery, "gallery")
         self.own = (spine, side, gallery)          # what other pages put their figures in the place of
+        # the controls' answers come with the figures' models
         self._whole = Column(head, *self.own, _named(board.foot, "foot"), css_classes=["region-plots"],
-                             stylesheets=[PLOTS_CSS], sizing_mode="stretch_both")
+                             tags=[self.controls.answers], stylesheets=[PLOTS_CSS], sizing_mode="stretch_both")
         return pn.pane.Bokeh(self._whole, css_classes=["region-plots"], margin=0, sizing_mode="stretch_both")
 
     def add(self, part):

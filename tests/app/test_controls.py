@@ -32,7 +32,7 @@ def move(controls, key, **what):
     """What the browser sends when a person moves a control."""
     group, _, name = key.partition(".")
     at = controls.groups[group]
-    at.moved = {"name": name, "n": (at.moved or {"n": 0})["n"] + 1, "released": True, **what}
+    at.take({"name": name, "n": at._answered.get(name, 0) + 1, "released": True, **what})
 
 
 def shown(controls, key):

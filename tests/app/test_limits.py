@@ -180,10 +180,10 @@ def test_the_judgement_has_controls_of_its_own(page):
     session.page = "limits"
     control = response.controls.view[0]
     assert [spec["name"] for spec in control.fields] == ["safety", "modulus", "reference_area"]
-    control.moved = {"name": "safety", "n": 1, "text": "2", "released": True}
+    control.take({"name": "safety", "n": 1, "text": "2", "released": True})
     assert session.state.judgement.safety == 2.0 and "safety factor 2" in made.board.now.data["html"][0]
     assert not session.state.dirty and not session.state.can_undo
-    control.moved = {"name": "safety", "n": 2, "text": "0.5", "released": True}
+    control.take({"name": "safety", "n": 2, "text": "0.5", "released": True})
     assert "allowed is 1 to 5" in control.shown["safety"]["message"] and session.state.judgement.safety == 2.0
 
 
