@@ -29,6 +29,7 @@ from app.values import (
     typed_number,
     value_text,
 )
+from app.wire import send
 
 HERE = Path(__file__).parent
 GROUP_CSS, COLUMN_CSS = ((HERE / name).read_text(encoding="utf-8") for name in ("controls.css", "column.css"))
@@ -278,5 +279,5 @@ class Controls:
     def _answer(self, answered=False):
         """Tell the browser what changed."""
         if self._news or answered:
-            self.answers.data = {"json": [json.dumps({"shown": self._news, "answered": answered})]}
+            send(self.answers, {"json": [json.dumps({"shown": self._news, "answered": answered})]})
             self._news = {}

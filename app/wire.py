@@ -11,12 +11,15 @@ from contextlib import contextmanager
 
 import numpy as np
 import panel as pn
+from bokeh.core.serialization import Buffer
 from bokeh.models import BoxAnnotation, ColumnDataSource, Div, Plot, Range1d, Span
+from bokeh.protocol.messages.patch_doc import patch_doc
+from bokeh.util.serialization import make_id
 
 PLAIN = (BoxAnnotation, ColumnDataSource, Div, Plot, Range1d, Span)    # models whose plain values a parcel can carry
 SMALL = 48                                                             # numbers a column may have to go as text
 
-__all__ = ["Inbox", "Outbox"]
+__all__ = ["Inbox", "Outbox", "send"]
 
 
 class Outbox:
@@ -53,7 +56,7 @@ class Outbox:
             self.count += 1
             values = {key: {name: getattr(model, name) for name in sorted(names)} for key, (model, names) in changed.items()}
             text, floats = packed(values)
-            self.model.data = {"json": [text], "floats": [floats], "count": [self.count]}
+            send(self.model, {"json": [text], "floats": [floats], "count": [self.count]})
 
 
 def _is_plain(attribute, value):
@@ -91,6 +94,37 @@ def packed(values):
                    for name, value in attributes.items()} for key, attributes in values.items()}
     text = json.dumps(plain, separators=(",", ":"), allow_nan=False)
     return text, np.concatenate(floats) if floats else np.zeros(0, np.float32)
+
+
+def send(source, data):
+    """Replace a source's data in the browser, with the plainest message that does it.
+
+    For each message Bokeh writes down a reference to every model of the document, which takes as long as all the rest. The
+    source has to be known to the browser; its data on the server's side stay as they were. Where there is no connection of
+    that kind, they are set as ever.
+
+    Parameters
+    ----------
+    source : bokeh.models.ColumnDataSource
+    data : dict
+        Columns of plain values, or of one float32 array.
+    """
+    session = getattr(getattr(source.document, "session_context", None), "session", None)
+    if session is None or session._pending_writes is None:
+        source.data = data
+        return
+    buffers, entries = [], []
+    for name, column in data.items():
+        if len(column) and isinstance(column[0], np.ndarray):
+            buffers.append(Buffer(make_id(), column[0].tobytes()))
+            column = [{"type": "ndarray", "array": {"type": "bytes", "data": {"id": buffers[-1].id}},
+                       "shape": list(column[0].shape), "dtype": "float32", "order": "little"}]
+        entries.append([name, column])
+    event = {"kind": "ModelChanged", "model": {"id": source.id}, "attr": "data", "new": {"type": "map", "entries": entries}}
+    for connection in session._subscribed_connections:
+        message = patch_doc(patch_doc.create_header(), {}, {"events": [event]})
+        message.add_buffers(*buffers)
+        session._pending_writes.append(connection._socket.send_message(message))
 
 
 class Inbox:

@@ -37,7 +37,7 @@ APP = {
     "main": {"pages", "session", "theme"},
     "pages": {"figures", "controls", "session"},
     "figures": {"theme", "wire", "engine"},
-    "controls": {"state", "values"},
+    "controls": {"state", "values", "wire"},
     "session": {"state", "worker"},
     "worker": {"engine"},
     "state": {"engine", "values"},

@@ -83,10 +83,18 @@ const paintPlainly = (glyph) => {
   }
   return true
 }
+// At every repaint each of them would also write a style sheet of its own for an element in which there is nothing to see,
+// and the browser would work out the page's styles and layout anew.
+const restPlace = (renderer) => {
+  if (typeof renderer.update_position !== "function") return false
+  renderer.update_position = () => {}
+  return true
+}
 const restCopies = (view) => {
   let rested = 0
   plainInks(view.visuals)
   for (const renderer of view.renderer_views.values()) {
+    if (restPlace(renderer)) rested += 1
     plainInks(renderer.glyph?.visuals)
     if (paintPlainly(renderer.glyph)) rested += 1
     for (const name of COPIES) {
