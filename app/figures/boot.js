@@ -91,16 +91,16 @@ const restPlace = (renderer) => {
   return true
 }
 const restCopies = (view) => {
-  let rested = 0
+  const rested = { copies: 0, words: 0, places: 0 }
   plainInks(view.visuals)
   for (const renderer of view.renderer_views.values()) {
-    if (restPlace(renderer)) rested += 1
+    if (restPlace(renderer)) rested.places += 1
     plainInks(renderer.glyph?.visuals)
-    if (paintPlainly(renderer.glyph)) rested += 1
+    if (paintPlainly(renderer.glyph)) rested.words += 1
     for (const name of COPIES) {
       if (!WORK.every((work) => typeof renderer[name]?.[work] === "function")) continue
       for (const work of WORK) renderer[name][work] = () => {}
-      rested += 1
+      rested.copies += 1
     }
   }
   return rested
@@ -153,7 +153,7 @@ const SENT = ["level", "rows", "motion", "shapes", "nodes", "gallery", "moving",
 const boot = (m) => {
   const held_m = Object.fromEntries(SENT.map((name) => [name, m[`held_${name}`]]))
   const page = { m, held_m, now: null, held: null, turns: { peaks: [], dips: [] }, f: 0, chosen: null, keys: true, pressed: 0,
-                 unfolded: false, sheet: 0, pages: 1, tiles: [], phase: 0, moving: null, dressed: new WeakSet(), rested: 0, shown: 0,
+                 unfolded: false, sheet: 0, pages: 1, tiles: [], phase: 0, moving: null, dressed: new WeakSet(), rested: {}, shown: 0,
                  others: [], own: [], tools: TOOLS, playing: !window.matchMedia("(prefers-reduced-motion: reduce)").matches }
   for (const name of SENT) {
     m[name].connect(m[name].properties.data.change, () => reread(page))

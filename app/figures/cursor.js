@@ -104,7 +104,7 @@ const dress = (page, name) => {
   const plot = page.m[name], view = viewOf(plot)
   if (!view || page.dressed.has(view.el)) return
   page.dressed.add(view.el)
-  page.rested += restCopies(view)
+  for (const [part, count] of Object.entries(restCopies(view))) page.rested[part] = (page.rested[part] ?? 0) + count
   view.el.tabIndex = 0
   view.el.setAttribute("role", name === "section_plot" || name === "phasor_plot" ? "img" : "application")
   view.el.setAttribute("aria-label", LABELS[name])
