@@ -1,16 +1,20 @@
 """Distortion of the driven film: harmonics, intermodulation, and the drive that has none."""
 
-from dataclasses import dataclass
+from dataclasses import dataclass, fields, replace
+from functools import lru_cache
 
 import numpy as np
 
 from engine import harmonic
+from engine.design import Listener
 from engine.errors import InvalidDesign
 from engine.response import DEFAULT_BAND, basis_for, level, transfer
 from engine.statics import Finding, frozen
 
 SAMPLES = 64                  # of a period, at least
 MOST_HARMONICS = 32
+MOST_FREQUENCIES = 5000
+MOST_NUMBERS = 30_000_000     # of the inverses kept at a time
 LAWS = ("sine", "square-root")
 
 
@@ -49,14 +53,32 @@ def distortion(design, frequency, amplitude=None, n_harmonics=8):
     phase = 2*np.pi*np.arange(n_samples)/n_samples
     order = np.arange(n_harmonics + 1)
     drive = _components(waveform(design.drive, phase), phase, order)
-    return _solve(design, f, order, phase, np.broadcast_to(drive, (len(f), len(order))))
+    # the inverses of so many frequencies at a time
+    step = max(1, MOST_NUMBERS//(n_harmonics*len(basis_for(design, _top(f))[1].shapes)**2))
+    return _joined([_solve(design, part, order, phase, np.broadcast_to(drive, (len(part), len(order))), _top(f))
+                    for part in np.split(f, np.arange(step, len(f), step))])
 
 
-def _solve(design, f, order, phase, drive):
+def _joined(parts):
+    """One Distortion of consecutive pieces of its frequencies."""
+    if len(parts) == 1:
+        return parts[0]
+    every = {}
+    for field in fields(Distortion):
+        values = [getattr(part, field.name) for part in parts]
+        if isinstance(values[0], np.ndarray):
+            every[field.name] = frozen(np.concatenate(values))
+        else:
+            every[field.name] = sum(values, ()) if isinstance(values[0], tuple) else values[0]
+    return Distortion(**every)
+
+
+def _solve(design, f, order, phase, drive, top):
     """Distortion at fundamentals f (n_freq,) for source components drive (n_freq, n_harmonics+1)."""
-    system, basis = basis_for(design, _top(f, order))
+    system, basis = basis_for(design, top)
     omega = 2*np.pi*f[:, None]*order
-    task = harmonic.problem(system, basis, omega, phase[:, None]*order)
+    task = _problem(replace(design, name="-", note="", drive=replace(design.drive, amplitude=0.0, law="sine"),
+                            listener=Listener()), f.tobytes(), len(order), len(phase), top)
     solved = harmonic.balance(task, drive)
     pressure = _pressure(design, system, basis, task, omega, solved)
     power = np.abs(pressure)**2
@@ -65,10 +87,18 @@ def _solve(design, f, order, phase, drive):
     return Distortion(
         frequency=frozen(f), harmonic_pressure=frozen(pressure), thd=frozen(_ratio(harmonics, total)),
         thd_fundamental=frozen(_ratio(harmonics, fundamental)), converged=frozen(solved.converged),
-        conditions=_conditions(design, system, f, order, solved), peak_field=frozen(solved.samples.peak_field.max(axis=1)),
-        least_stress=frozen(solved.samples.least_stress.min(axis=1)),
+        conditions=_conditions(design, system, f, order, solved), peak_field=frozen(solved.extremes.peak_field),
+        least_stress=frozen(solved.extremes.least_stress),
         centre_motion=frozen(solved.motion @ basis.shapes[:, 0]), source_voltage=frozen(np.array(drive)),
         amplitude=design.drive.amplitude)
+
+
+@lru_cache(maxsize=2)
+def _problem(design, fundamentals, n_comp, n_samples, top):
+    """Problem of a design, whatever drives it: kept for other amplitudes, laws and listeners."""
+    f, order = np.frombuffer(fundamentals), np.arange(n_comp)
+    system, basis = basis_for(design, top)
+    return harmonic.problem(system, basis, 2*np.pi*f[:, None]*order, 2*np.pi*np.arange(n_samples)[:, None]/n_samples*order)
 
 
 def waveform(drive, phase):
@@ -87,14 +117,14 @@ def _components(samples, phase, order):
 
 def _checked(frequency, n_harmonics):
     f = np.atleast_1d(np.asarray(frequency, float))
-    if f.ndim != 1 or not f.size or not np.all(np.isfinite(f)) or f.min() < 1 or f.max() > 20e3:
-        raise InvalidDesign("Distortion is computed at one or more frequencies between 1 Hz and 20 kHz.")
+    if f.ndim != 1 or not 0 < f.size <= MOST_FREQUENCIES or not np.all(np.isfinite(f)) or f.min() < 1 or f.max() > 20e3:
+        raise InvalidDesign(f"Distortion is computed at one to {MOST_FREQUENCIES} frequencies between 1 Hz and 20 kHz.")
     if not 2 <= n_harmonics <= MOST_HARMONICS:
         raise InvalidDesign(f"Ask for 2 to {MOST_HARMONICS} harmonics, the fundamental counted as one.")
     return f
 
 
-def _top(f, order):
+def _top(f):
     """Highest frequency that the basis has to carry well: the band of the page, or the highest fundamental."""
     return float(max(DEFAULT_BAND[1], f.max()))
 
@@ -109,20 +139,11 @@ def _pressure(design, system, basis, task, omega, solved):
     flat = omega[:, 1:].ravel()
     T = transfer(system, basis, flat/(2*np.pi), listener.distance, listener.angle)
     linear_part = np.sum(T.reshape(*omega[:, 1:].shape, -1)*solved.motion[:, 1:], axis=-1)
-    extra = harmonic.components(task, _extra_volume(task.model, solved.samples.state)[..., None])[:, 1:, 0]
+    extra = harmonic.components(task, solved.extremes.extra_volume[..., None])[:, 1:, 0]
     k, d = omega[:, 1:]/system.air.sound_speed, listener.distance
     monopole = -omega[:, 1:]**2*system.air.density*np.exp(-1j*k*d)/(2*np.pi*d)
     absorbed = 10**(-system.air.absorption(omega[:, 1:]/(2*np.pi))*d/20)
     return (linear_part + monopole*absorbed*extra)*task.audible
-
-
-def _extra_volume(model, q):
-    """S(q) - S0 - s q (n, n_samples) m3: what of the swept volume is not linear in the motion."""
-    e, w = model.rest, model.film.mesh.weight.ravel()
-    r0, z0 = e.r.ravel(), e.dz.ravel()
-    u, slope = q @ model.radial, q @ model.axial_slope
-    # -pi (r+u)^2 (z'+slope), its terms of second and third order
-    return -np.pi*np.sum(w*(u**2*z0 + 2*r0*u*slope + u**2*slope), axis=-1)
 
 
 def _conditions(design, system, f, order, solved):
@@ -137,7 +158,7 @@ def _conditions(design, system, f, order, solved):
             told.append(Finding("pull-in", f"No periodic motion was found at {frequency:.3g} Hz: the film passes pull-in "
                                 "within the cycle, or its motion is not periodic. Lower the amplitude.", "cycle"))
         else:
-            stress, field = solved.samples.least_stress[i].min(), solved.samples.peak_field[i].max()
+            stress, field = solved.extremes.least_stress[i], solved.extremes.peak_field[i]
             if stress <= 0:
                 told.append(Finding("slack", f"The film goes slack {where}.", "cycle", value=float(stress), limit=0.0))
             if field >= limit:
@@ -176,9 +197,9 @@ def compensated_drive(design, frequency, amplitude=None, n_harmonics=5, toleranc
     phase, order = 2*np.pi*np.arange(n_samples)/n_samples, np.arange(n + 1)
     drive = _components(waveform(design.drive, phase), phase, order)[None]
     small = design.with_values({"drive.law": "sine"})
-    system, basis = basis_for(design, _top(f, order))
+    system, basis = basis_for(design, _top(f))
     from_volt = _per_volt(small, system, basis, f[0]*order[1:])
-    found = _solve(design, f, order, phase, drive)
+    found = _solve(design, f, order, phase, drive, _top(f))
     for _ in range(25):
         p = found.harmonic_pressure[0]
         if not found.converged[0] or found.thd[0] < tolerance:
@@ -190,7 +211,7 @@ def compensated_drive(design, frequency, amplitude=None, n_harmonics=5, toleranc
             break
         drive = drive.copy()
         drive[0, 1:] -= np.where(np.abs(from_volt) > 0, wrong/np.where(from_volt == 0, 1, from_volt), 0)
-        found = _solve(design, f, order, phase, drive)
+        found = _solve(design, f, order, phase, drive, _top(f))
     p = found.harmonic_pressure[0]
     residual = float(_ratio(np.linalg.norm(p[1:n_harmonics]), np.linalg.norm(p)))
     top = float(np.max(np.abs(design.drive.bias + np.real(np.exp(1j*np.outer(phase, order)) @ drive[0]))))
@@ -211,8 +232,7 @@ def _per_volt(design, system, basis, frequency):
     n_basis = len(basis.shapes)
     volt = np.zeros((known.sum(), 2), complex)
     volt[:, 1] = 1.0
-    still = np.zeros((int(known.sum()), 2, n_basis + len(task.model.functions)), complex)
-    new = harmonic.linear_answer(task, volt, still)
+    new = harmonic.linear_answer(task, volt)
     T = transfer(system, basis, frequency[known], design.listener.distance, design.listener.angle)
     from_motion[known] = np.sum(T*new[:, 1, :n_basis], axis=1)
     return from_motion
@@ -258,7 +278,7 @@ def intermodulation(design, f1, f2, amplitude=None, ratio=1.0, most=3):
             raise InvalidDesign("The square-root law has no value for this signal: lower the amplitude.", "drive.amplitude")
         signal = np.sqrt(V**2 + 2*V*signal) - V
     frequency = order @ np.array([f1, f2])
-    system, basis = basis_for(design, _top(frequency, order))
+    system, basis = basis_for(design, _top(frequency))
     omega = 2*np.pi*frequency[None]
     task = harmonic.problem(system, basis, omega, theta)
     drive = harmonic.components(task, signal[None, :, None])[..., 0]

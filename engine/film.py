@@ -126,6 +126,16 @@ def surface_energy(film, A, B, voltage, electrodes=True):
     return W[0] - c*A*B, W[1] - c*B, W[2] - c*A, W[3], W[4] - c, W[5]
 
 
+def energy_slopes(film, A, B, voltage, electrodes=True):
+    """(w_A, w_B) of surface_energy alone, in the precision of A and B."""
+    wA, wB = material.energy_slopes(film.law, film.law_parameters, film.thickness*film.shear_modulus, film.prestretch, A, B)
+    if electrodes and film.electrode_stiffness:
+        q = film.electrode_stiffness/(A*B)
+        wA, wB = wA + (film.electrode_stiffness - q/A), wB + (film.electrode_stiffness - q/B)
+    c = film.areal_capacitance/2*voltage**2
+    return wA - c*B, wB - c*A
+
+
 def strain_rows(film, e):
     """(n_elements, 2(order+1), 2(order+1)): rows delta A of all points then delta B, columns r then z."""
     n, p1 = film.mesh.n_elements, film.mesh.order + 1

@@ -1,113 +1,50 @@
 """Harmonic balance by alternating frequency and time: the full film force on samples, the linear part per component.
 
-State x = (q, v): motion in the basis about the rest state, and the line voltages that are not prescribed. A component
-has a frequency; component 0 is the mean. q(t) = Q_0 + Re sum_c Q_c e^{i theta_c}; amplitudes are peak values.
+State x = (q, v): motion in the basis about the rest state, and the line voltages. A component has a frequency; component
+0 is the mean. q(t) = Q_0 + Re sum_c Q_c e^{i theta_c}; amplitudes are peak values.
 
     Z(omega_c) Q_c - Gamma v_c = -(nonlinear film force)_c            and the line's charge likewise
 """
 
 from dataclasses import dataclass
+from itertools import pairwise
 
 import numpy as np
 
-from engine import film as flm
-from engine import linear, radiation
+from engine import cycle, inverses, linear
 from engine.modes import Basis
-from engine.motion import dynamic_stiffness, reduce
+from engine.motion import reduce
 
-TOLERANCE = 1e-6         # change of the state in one round, over the state
+TOLERANCE = 5e-6         # change of the state in one round, over the state; components weighted as they sound
+COARSE = 3e-3            # above such a change single precision and every other sample do, in the first rounds
+COARSE_ROUNDS = 3
 ROUNDS = 40
-
-
-@dataclass(frozen=True)
-class Samples:
-    """What the film does at every sample: motion on the mesh is recovered from it where needed.
-
-    state (n, n_samples, n_basis) m; line (n, n_samples, n_line) V of signal; least_stress, peak_field (n, n_samples).
-    """
-
-    state: np.ndarray
-    line: np.ndarray
-    least_stress: np.ndarray
-    peak_field: np.ndarray
+MEMORY = 4               # rounds that the next one is extrapolated from
 
 
 @dataclass(frozen=True)
 class Balance:
-    """Solved components: motion (n, n_comp, n_basis), line (n, n_comp, n_line), converged (n,), residual (n,), samples."""
+    """Solved components: motion (n, n_comp, n_basis), line (n, n_comp, n_line), converged (n,), extremes of the cycle."""
 
     motion: np.ndarray
     line: np.ndarray
     converged: np.ndarray
-    samples: Samples
-
-
-@dataclass(frozen=True)
-class Nonlinear:
-    """The film's full force and charge on the basis, for many states at once."""
-
-    film: flm.Film
-    bias: float
-    rest: flm.Strain
-    radial: np.ndarray           # (n_basis, n_points)
-    radial_slope: np.ndarray
-    axial_slope: np.ndarray
-    centre: np.ndarray           # (n_basis,): rise of the centre
-    functions: np.ndarray        # (n_line, n_points)
-    tangent: np.ndarray          # K (n_basis, n_basis), without the rear
-    loads: np.ndarray            # (n_line, n_basis)
-    capacitance: np.ndarray      # (n_line, n_line)
-    constant: np.ndarray         # (n_basis,) force at rest: round-off
-    rest_charge: np.ndarray      # (n_line,) C
-
-
-def nonlinear(system, basis, reduced):
-    """The film's force on a basis about a system's rest state."""
-    film, mesh = system.film, system.film.mesh
-    radial, axial = flm.expand(film, basis.shapes)
-    flat = [part.reshape(len(part), -1) for part in (mesh.local(radial), mesh.derivative(radial), mesh.derivative(axial))]
-    v = basis.shapes @ system.volume
-    rest = flm.strain(film, system.state)
-    lines = system.circuit.functions[:, mesh.nodes].reshape(len(system.circuit.functions), -1)
-    made = Nonlinear(film, system.rest.bias, rest, *flat, basis.shapes[:, 0], lines,
-                     reduced.real[0] - system.rear.stiffness*np.outer(v, v), reduced.loads, system.circuit.capacitance,
-                     np.zeros(len(v)), np.zeros(len(lines)))
-    none = np.zeros((1, len(v)))
-    force, charge, _, _ = _force(made, none, np.zeros((1, len(lines))))
-    return Nonlinear(**{**made.__dict__, "constant": force[0], "rest_charge": charge[0]})
-
-
-def _force(model, q, line):
-    """Force dPi/dq (n, n_basis), charge (n, n_line), least stress and peak field (n,) of states q, signal voltages line."""
-    e, film = model.rest, model.film
-    r0, area = film.mesh.local_radius.ravel(), film.area.ravel()
-    r = e.r.ravel() + q @ model.radial
-    dr, dz = e.dr.ravel() + q @ model.radial_slope, e.dz.ravel() + q @ model.axial_slope
-    A, B = dr**2 + dz**2, (r/r0)**2
-    V = model.bias + line @ model.functions
-    _, wA, wB, *_ = flm.surface_energy(film, A, B, V)
-    force = ((2*area*wA*dr) @ model.radial_slope.T + (2*area*wA*dz) @ model.axial_slope.T
-             + (2*area*wB*r/r0**2) @ model.radial.T)
-    force += film.spring_rate*(q @ model.centre)[:, None]*model.centre
-    charge = (film.areal_capacitance*area*A*B*V) @ model.functions.T
-    if film.electrode_stiffness:
-        _, wA, wB, *_ = flm.surface_energy(film, A, B, V, electrodes=False)
-    least = 2*np.minimum(A*wA, B*wB).min(axis=1)/film.thickness
-    field = (np.abs(V)*np.sqrt(A*B)).max(axis=1)/film.layer_thickness
-    return force, charge, least, field
+    extremes: cycle.Extremes
 
 
 @dataclass(frozen=True)
 class Problem:
-    """Components and the linear part: theta (n_samples, n_comp) phases; inverse (n, n_comp-1, size, size)."""
+    """Components and the linear part; independent of the drive."""
 
-    model: Nonlinear
-    theta: np.ndarray
+    model: cycle.Nonlinear
+    single: cycle.Nonlinear      # in single precision
+    theta: np.ndarray            # (n_samples, n_comp) phases
     free: np.ndarray             # line functions that are unknown
-    inverse: np.ndarray
+    inverse: np.ndarray          # (n, n_comp-1, size, size) complex64
     static: np.ndarray           # (n_basis, n_basis): inverse of K + K_rear
     audible: np.ndarray          # (n, n_comp-1) bool: components the basis can carry
     source: np.ndarray           # (n, n_comp-1) complex ohm^-1 s: 1/(i omega R), 0 without source resistance
+    weight: np.ndarray           # (n, n_comp): omega^2 over the lowest, as pressure goes with acceleration
 
 
 def problem(system, basis: Basis, omega, theta):
@@ -116,122 +53,175 @@ def problem(system, basis: Basis, omega, theta):
     Components above the basis's highest frequency are left out (audible is False there).
     """
     reduced = reduce(system, basis)
-    model = nonlinear(system, basis, reduced)
+    model = cycle.nonlinear(system, basis, reduced)
     circuit = system.circuit
-    n, n_comp = omega.shape
-    n_basis = len(basis.shapes)
     free = np.arange(0 if circuit.source_resistance > 0 else 1, len(circuit.inner))
-    top = 2*np.pi*system.frequency_max*linear.MODES_TO
-    audible = omega[:, 1:] <= top
-    flat = np.where(audible, omega[:, 1:], top).ravel()
-    matrices = (X.reshape(-1, n_basis**2) for X in (reduced.real, reduced.constant_loss, *basis.projected))
-    at = radiation.interpolation(flat*system.frame_radius/system.air.sound_speed, basis.tables)
-    Z, _ = dynamic_stiffness(system, flat, at, *matrices)
-    source = np.zeros(len(flat), complex)
+    audible = omega[:, 1:] <= 2*np.pi*system.frequency_max*linear.MODES_TO
+    later = omega[:, 1:]
+    source = 1/(1j*later*circuit.source_resistance) if circuit.source_resistance > 0 else 0j*later
+    n_basis, size = len(basis.shapes), len(basis.shapes) + len(free)
+    # (n, n_comp-1): what the voltage does where the film is still, then the whole where the basis reaches
+    inverse = np.zeros((*later.shape, size, size), np.complex64)
     if len(free):
-        size = n_basis + len(free)
-        whole = np.zeros((len(flat), size, size), complex)
-        whole[:, :n_basis, :n_basis] = Z
-        whole[:, :n_basis, n_basis:] = -model.loads[free].T
-        whole[:, n_basis:, :n_basis] = -model.loads[free]
-        line = (circuit.capacitance + circuit.conductance/(1j*flat[:, None, None]))[:, free][:, :, free]
-        if circuit.source_resistance > 0:
-            source = 1/(1j*flat*circuit.source_resistance)
-            line[:, 0, 0] += source
-        whole[:, n_basis:, n_basis:] = -line
-        Z = whole
-    inverse = np.linalg.inv(Z).reshape(n, n_comp - 1, *Z.shape[1:])
-    return Problem(model, theta, free, inverse, np.linalg.inv(reduced.real[0]), audible, source.reshape(n, -1))
+        inverse[..., n_basis:, n_basis:] = np.linalg.inv(inverses.line_part(circuit, later, free))
+    inverses.fill(inverse.reshape(-1, size, size), np.flatnonzero(audible), system, basis, reduced, later[audible], free)
+    lowest = np.where(omega > 0, omega, np.inf).min(axis=1, keepdims=True)
+    return Problem(model, model.astype(np.float32), theta, free, inverse, np.linalg.inv(reduced.real[0]), audible, source,
+                   (np.maximum(omega, lowest)/lowest)**2)
 
 
 def solve(task: Problem, drive, start=None):
-    """Balance for source voltages drive (n, n_comp) complex V, peak, the mean deviation from the bias first.
+    """State (n, n_comp, size) and convergence (n,) for source voltages drive (n, n_comp) complex V, peak, mean first.
 
-    Fixed point x <- (linear part)^-1 (drive - nonlinear remainder), all rows as one batch; a row that does not settle in
-    ROUNDS rounds is returned with converged False.
+    Fixed point x <- (linear part)^-1 (drive - nonlinear remainder), each row extrapolated from its last MEMORY rounds
+    (Anderson 1965); all rows as one batch, a row that has settled leaves it. A row that does not settle in ROUNDS rounds
+    is returned as it was last, with converged False.
     """
-    n, n_comp = drive.shape
-    n_basis, n_line = len(task.static), len(task.model.functions)
-    x = np.zeros((n, n_comp, n_basis + n_line), complex) if start is None else start
-    x = _round(task, drive, x, None)[0] if start is None else x
-    converged, running = np.zeros(n, bool), np.ones(n, bool)
-    change = np.full(n, np.inf)
+    n = len(drive)
+    right = unmoved(task, drive)
+    answer = _answer(task, drive, right, np.arange(n))
+    x = answer.copy() if start is None else start.copy()
+    converged, rows = np.zeros(n, bool), np.arange(n)
+    change, past = np.full(n, np.inf), []
     with np.errstate(all="ignore"):
-        for _ in range(ROUNDS):
-            rows = np.flatnonzero(running)
+        for turn in range(ROUNDS):
             if not len(rows):
                 break
-            new, _ = _round(task, drive, x[rows], rows)
-            size = np.linalg.norm(new[..., :n_basis], axis=(1, 2))
-            change[rows] = np.linalg.norm(new[..., :n_basis] - x[rows][..., :n_basis], axis=(1, 2))/np.maximum(size, 1e-300)
-            good = np.isfinite(change[rows]) & (size < 1e3)
-            x[rows[good]] = new[good]
-            converged[rows] = change[rows] < TOLERANCE
-            running[rows[~good]] = False
-            running[rows[converged[rows]]] = False
+            coarse = (change[rows] > COARSE) & (turn < COARSE_ROUNDS)
+            new = _mixed(task, drive, x[rows], rows, coarse)
+            # the linear part in single precision, of the difference to the round before
+            answer[rows] += _answer(task, 0.0, new - right[rows], rows)
+            right[rows] = new
+            step, w = answer[rows] - x[rows], task.weight[rows][..., None]
+            change[rows] = _size(step, w, task)/np.maximum(_size(answer[rows], w, task), 1e-300)
+            settled = (change[rows] < TOLERANCE) & ~coarse
+            converged[rows[settled]] = True
+            x[rows[settled]] = answer[rows[settled]]
+            keep = ~settled & np.isfinite(change[rows])
+            rows, past = rows[keep], [[part[keep] for part in pair] for pair in past]
+            past = [*past, [x[rows], step[keep]]][-MEMORY - 1:]
+            x[rows] = _extrapolated(past, w[keep]) if len(rows) else x[rows]
     return x, converged
 
 
-def _round(task, drive, x, rows):
-    """One round of the fixed point on some rows: (new state, samples)."""
-    every = slice(None) if rows is None else rows
-    model, n_basis = task.model, len(task.static)
-    q, line = sampled(task, x)
-    shape = q.shape[:2]
-    force, charge, least, field = (part.reshape(*shape, *part.shape[1:]) for part in _force(
-        model, q.reshape(-1, n_basis), line.reshape(-1, line.shape[-1])))
-    rest = force - model.constant - q @ model.tangent + line @ model.loads
-    extra = charge - model.rest_charge - q @ model.loads.T - line @ model.capacitance
-    N, E = (components(task, part) for part in (rest, extra))
-    return _answer(task, drive[every], x, N, E, every), Samples(q, line, least, field)
+def _size(x, weight, task):
+    """(n,) of states: of the motion, weighted as it sounds."""
+    return np.linalg.norm(x[..., :len(task.static)]*weight, axis=(1, 2))
 
 
-def _answer(task, d, x, N, E, every):
-    """What the linear part makes of a drive d and of the remainders N of force and E of charge."""
+def _extrapolated(past, weight):
+    """Next state of each row from its past pairs (state, step): the combination whose step is the least."""
+    x, step = past[-1]
+    if len(past) == 1:
+        return x + step
+    dx, df = (np.stack([now[k] - before[k] for before, now in pairwise(past)], axis=1) for k in (0, 1))
+    m = df.shape[1]
+    flat = (df*weight[:, None]).reshape(len(x), m, -1).view(float)
+    right = (step*weight).reshape(len(x), -1).view(float)
+    scale = np.linalg.norm(flat, axis=2)
+    flat = flat/np.maximum(scale, 1e-300)[..., None]
+    normal = flat @ flat.transpose(0, 2, 1) + 1e-10*np.eye(m)
+    share = np.linalg.solve(normal, flat @ right[..., None])[..., 0]/np.maximum(scale, 1e-300)
+    return x + step - np.einsum("nm,nmcs->ncs", share, dx + df)
+
+
+def _mixed(task, drive, x, rows, coarse):
+    """Right side of the linear part at states x of some rows, the coarse ones coarsely."""
+    if coarse.all() or not coarse.any():
+        return right_side(task, drive[rows], x, rows, coarse.all())
+    new = np.empty((*x.shape[:2], task.inverse.shape[-1]), complex)
+    for which, single in ((coarse, True), (~coarse, False)):
+        new[which] = right_side(task, drive[rows[which]], x[which], rows[which], single)
+    return new
+
+
+def right_side(task, d, x, rows, single=False):
+    """Right side (n, n_comp, size) of the linear part: drive d less the nonlinear remainder at states x."""
+    n_basis = len(task.static)
+    model, theta = (task.single, task.theta[::2]) if single else (task.model, task.theta)
+    return _right(task, d, *remainder(model, x[..., :n_basis], x[..., n_basis:], theta, len(task.free) > 0), rows)
+
+
+def unmoved(task, drive):
+    """Right side for a drive (n, n_comp) where nothing moves."""
+    shape = drive.shape
+    return _right(task, drive, np.zeros((*shape, len(task.static))), np.zeros((*shape, len(task.model.functions))),
+                  np.arange(len(drive)))
+
+
+def _waves(theta):
+    """(n_samples, 2 n_comp): from real then imaginary parts of components to samples; and back."""
+    wave = np.concatenate([np.cos(theta), -np.sin(theta)], axis=1)
+    back = wave.T*2/len(theta)
+    back[0] /= 2
+    return wave, back
+
+
+def _parts(x, kind):
+    return np.concatenate([x.real, x.imag], axis=1).astype(kind)
+
+
+def remainder(model, motion, line, theta, charged):
+    """Components of what of the film's force, and of its charge (None unless charged), is not linear; see cycle."""
+    kind, n_comp = model.area.dtype, motion.shape[1]
+    wave, back = (part.astype(kind) for part in _waves(theta))
+    force, charge = cycle.force_and_charge(model, _parts(motion, kind), _parts(line, kind), wave, back, charged)
+    force = force[:, :n_comp] + 1j*force[:, n_comp:]
+    force -= motion @ model.tangent - line @ model.loads
+    force[:, 0] -= model.constant
+    if charged:
+        charge = charge[:, :n_comp] + 1j*charge[:, n_comp:]
+        charge -= motion @ model.loads.T + line @ model.capacitance
+        charge[:, 0] -= model.rest_charge
+    return force, charge
+
+
+def _right(task, d, N, E, rows):
+    """Right side (n, n_comp, size) of the linear part for a drive d and remainders N of force and E of charge."""
     model, n_basis = task.model, len(task.static)
-    new = np.zeros_like(x)
-    new[:, 0, :n_basis] = (d[:, :1]*model.loads[0] - N[:, 0]) @ task.static
-    new[:, 0, n_basis] = d[:, 0]
-    right = -N[:, 1:]
+    right = np.zeros((*N.shape[:2], n_basis + len(task.free)), complex)
+    right[..., :n_basis] = -N
+    right[:, 0, :n_basis] += d[:, :1]*model.loads[0]
     if task.source.any():
-        fed = np.zeros_like(E[:, 1:])
-        fed[..., 0] = -task.source[every]*d[:, 1:]
-        right = np.concatenate([right, (fed + E[:, 1:])[..., task.free]], axis=-1)
-    else:
-        right = right + d[:, 1:, None]*model.loads[0]
-        held = (E[:, 1:] + d[:, 1:, None]*model.capacitance[:, 0])[..., task.free]
-        right = np.concatenate([right, held], axis=-1)
-        new[:, 1:, n_basis] = d[:, 1:]
-    found = (task.inverse[every] @ right[..., None])[..., 0]*task.audible[every][..., None]
+        right[..., n_basis:] = E[..., task.free]
+        right[:, 1:, n_basis] -= task.source[rows]*d[:, 1:]
+        return right
+    right[:, 1:, :n_basis] += d[:, 1:, None]*model.loads[0]
+    if len(task.free):
+        right[..., n_basis:] = (E + d[..., None]*model.capacitance[:, 0])[..., task.free]
+    return right
+
+
+def _answer(task, d, right, rows):
+    """State (n, n_comp, size) that the linear part makes of a right side."""
+    n_basis = len(task.static)
+    new = np.zeros((*right.shape[:2], n_basis + len(task.model.functions)), complex)
+    new[:, 0, :n_basis] = right[:, 0, :n_basis] @ task.static
+    new[:, :, n_basis] = d
+    inverse = task.inverse if len(rows) == len(task.inverse) else task.inverse[rows]
+    found = (inverse @ right[:, 1:].astype(np.complex64)[..., None])[..., 0]
     new[:, 1:, :n_basis] = found[..., :n_basis]
     new[:, 1:, n_basis + task.free] = found[..., n_basis:]
     return new
 
 
-def linear_answer(task, drive, still):
-    """State components of the linear part alone for a drive (n, n_comp); still: zeros of the state's shape."""
-    quiet = np.zeros((drive.shape[0], drive.shape[1], len(task.static))), np.zeros((*drive.shape, len(task.model.functions)))
-    return _answer(task, drive, still, *quiet, slice(None))
-
-
-def sampled(task, x):
-    """Real samples (n, n_samples, ...) of the motion and of the line voltages of components x."""
-    wave = np.exp(1j*task.theta)
-    out = (wave.real @ x.real) - (wave.imag @ x.imag)
-    n_basis = len(task.static)
-    return out[..., :n_basis], out[..., n_basis:]
+def linear_answer(task, drive):
+    """State components (n, n_comp, size) of the linear part alone for a drive (n, n_comp)."""
+    return _answer(task, drive, unmoved(task, drive), np.arange(len(drive)))
 
 
 def components(task, samples):
     """Components (n, n_comp, ...) of real samples (n, n_samples, ...): the mean, then peak amplitudes."""
-    wave = np.exp(-1j*task.theta).T*2/len(task.theta)
-    wave[0] /= 2
-    return wave.real @ samples + 1j*(wave.imag @ samples)
+    _, back = _waves(task.theta)
+    both = back @ samples
+    n_comp = task.theta.shape[1]
+    return both[:, :n_comp] + 1j*both[:, n_comp:]
 
 
 def balance(task, drive):
     """Balance of a problem, with Newton's method on the rows that the fixed point leaves."""
     x, converged = solve(task, drive)
     n_basis = len(task.static)
-    _, samples = _round(task, drive, x, None)
-    return Balance(x[..., :n_basis], x[..., n_basis:], converged, samples)
+    x[~converged & ~(np.linalg.norm(x[..., :n_basis], axis=(1, 2)) < 1e3)] = 0
+    found = cycle.extremes(task.model, _parts(x[..., :n_basis], float), _parts(x[..., n_basis:], float), _waves(task.theta)[0])
+    return Balance(x[..., :n_basis], x[..., n_basis:], converged, found)

@@ -84,6 +84,49 @@ def strain_energy(law, parameters, shear_modulus, prestretch, A, B):
     return _ENERGIES[law](A, B, prestretch**2, shear_modulus, parameters)
 
 
+def _first_slopes(factor):
+    """Slopes of a law of the first invariant from its factor f'(I1; mu, parameters)."""
+    def slopes(A, B, P, mu, parameters):
+        q = 1/(A*B*P**2)
+        f = factor(P*(A + B) + q - 3, mu, parameters)
+        return f*(P - q/A), f*(P - q/B)
+    return slopes
+
+
+def _mooney_slopes(A, B, P, mu, parameters):
+    C1 = mu/2/(1 + parameters[0])
+    C2 = C1*parameters[0]
+    q = 1/(A*B*P**2)
+    return (C1*(P - q/A) + C2*(B*P**2 - 1/(P*A**2)), C1*(P - q/B) + C2*(A*P**2 - 1/(P*B**2)))
+
+
+def _ogden_slopes(A, B, P, mu, parameters):
+    m, alpha = parameters[0::2], parameters[1::2]
+    scale = 2*mu/sum(a*b for a, b in zip(m, alpha, strict=True))
+    first, second = 0.0, 0.0
+    for share, exponent in zip(m, alpha, strict=True):
+        s = exponent/2
+        c = (A*B*P**2)**-s
+        first, second = first + share*scale/2*((P*A)**s - c), second + share*scale/2*((P*B)**s - c)
+    return first/A, second/B
+
+
+def _gent_factor(e, mu, parameters):
+    room = parameters[0] - e
+    return mu*parameters[0]/2/np.where(room > 0, room, np.inf)
+
+
+_SLOPES = dict(zip(LAWS, (
+    _first_slopes(lambda e, mu, parameters: mu/2), _mooney_slopes, _first_slopes(_gent_factor),
+    _first_slopes(lambda e, mu, parameters: mu/2*(1 + 2*parameters[0]*e + 3*parameters[1]*e**2)), _ogden_slopes),
+    strict=True))
+
+
+def energy_slopes(law, parameters, shear_modulus, prestretch, A, B):
+    """(W_A, W_B) of strain_energy alone, in the precision of A and B: for many states at once."""
+    return _SLOPES[law](A, B, prestretch**2, shear_modulus, parameters)
+
+
 def viscous_modulus(omega, shear_modulus, loss_factor, viscosity=0.0, relaxation=()):
     """S(omega) = i mu tan(delta) + i omega eta + sum g mu i omega tau/(1 + i omega tau), Pa, for omega > 0; 0 at rest.
 

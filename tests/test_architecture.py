@@ -25,7 +25,7 @@ radiation_tables radiation
 rear
 circuit source linear modes motion
 response window
-harmonic distortion
+cycle inverses harmonic distortion
 limits
 summary
 """.split()

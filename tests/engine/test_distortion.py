@@ -100,6 +100,17 @@ def test_square_law_of_a_film_that_hardly_moves():
     assert abs(second)/abs(first) == pytest.approx(10.0/(4*1900.0), rel=0.02)
 
 
+def test_pieces_of_the_frequencies_do_not_matter(monkeypatch):
+    """Every frequency stands for itself (elementary): taken a few at a time, or in another order, they stay what they are."""
+    f = np.array([300.0, 40.0, 900.0, 90.0, 30.0])
+    whole = distortion(sample("fern-label"), f)
+    monkeypatch.setattr("engine.distortion.MOST_NUMBERS", 2*8*1000)
+    pieces = distortion(sample("fern-label"), f)
+    assert len(pieces.conditions) == 5 and pieces.centre_motion.shape == whole.centre_motion.shape
+    loud = np.abs(whole.harmonic_pressure) > 1e-3*np.abs(whole.harmonic_pressure[:, :1])
+    np.testing.assert_allclose(pieces.harmonic_pressure[loud], whole.harmonic_pressure[loud], rtol=1e-3)
+
+
 @samples
 def test_facts_of_the_trade(name):
     """Common practice: THD grows with amplitude; a sine distorts more than the square-root law at low frequency, which

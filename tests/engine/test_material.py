@@ -3,7 +3,7 @@
 import numpy as np
 import pytest
 
-from engine.material import LAWS, strain_energy, viscous_modulus
+from engine.material import LAWS, energy_slopes, strain_energy, viscous_modulus
 from tests.references import membranes as ref
 
 PARAMETERS = {"neo-hookean": (), "mooney-rivlin": (0.3,), "gent": (40.0,), "yeoh": (-0.02, 0.0008),
@@ -49,6 +49,24 @@ def test_derivatives(law):
     dA, dB = (W(A + d, B) - W(A - d, B))/(2*d), (W(A, B + d) - W(A, B - d))/(2*d)
     for found, expected in ((at[1], dA[0]), (at[2], dB[0]), (at[3], dA[1]), (at[4], dA[2]), (at[4], dB[1]), (at[5], dB[2])):
         np.testing.assert_allclose(found, expected, rtol=2e-7, atol=2e-8)
+
+
+@pytest.mark.parametrize("law", LAWS)
+def test_slopes_alone(law):
+    """Central differences of the energy; single precision stays single."""
+    rng = np.random.default_rng(4)
+    A, B = rng.uniform(0.8, 2.5, (2, 3, 20))
+    d = 1e-5
+
+    def W(A, B):
+        return strain_energy(law, PARAMETERS[law], 1.7, 1.2, A, B)[0]
+
+    found = energy_slopes(law, PARAMETERS[law], 1.7, 1.2, A, B)
+    np.testing.assert_allclose(found[0], (W(A + d, B) - W(A - d, B))/(2*d), rtol=1e-6)
+    np.testing.assert_allclose(found[1], (W(A, B + d) - W(A, B - d))/(2*d), rtol=1e-6)
+    single = energy_slopes(law, PARAMETERS[law], 1.7, 1.2, A.astype(np.float32), B.astype(np.float32))
+    assert single[0].dtype == single[1].dtype == np.float32
+    np.testing.assert_allclose(single[0], found[0], rtol=1e-4)
 
 
 def test_gent_has_a_limit():
