@@ -17,7 +17,7 @@ def test_against_the_plain_inverse(name, change):
     system, basis = basis_for(engine.load(f"sample_designs/{name}.toml").with_values(change), 5000.0)
     reduced = reduce(system, basis)
     free = np.arange(0 if system.circuit.source_resistance > 0 else 1, len(system.circuit.inner))
-    omega = 2*np.pi*np.exp(np.random.default_rng(5).uniform(np.log(15), np.log(7500), 120))
+    omega = 2*np.pi*np.exp(np.random.default_rng(5).uniform(np.log(15), np.log(7500), 300))
     n = len(basis.shapes) + len(free)
     found = np.empty((len(omega), n, n), np.complex64)
     inverses.fill(found, np.arange(len(omega)), system, basis, reduced, omega, free)
