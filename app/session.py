@@ -42,6 +42,7 @@ class Session(param.Parameterized):
     held = param.Parameter(doc="Overview of the held design in the band shown, or None")
     page = param.Selector(default=PAGES[0], objects=list(PAGES), doc="the page shown")
     limits = param.Parameter(doc="LimitsView of the last design whose limits could be computed, or None")
+    held_limits = param.Parameter(doc="LimitsView of the held design, or None")
     limits_fault = param.String(default="", doc="why the newest design's limits are not shown, or nothing")
     busy = param.Boolean(default=False, doc="whether a newer design than the one shown is being computed")
     problem = param.ClassSelector(class_=Problem, allow_None=True, doc="why the newest design is not shown, or None")
@@ -58,10 +59,12 @@ class Session(param.Parameterized):
         self._shown = updater(self._publish, self._browser_ready)
         self._grey = updater(self._publish_held)
         self._walls = (limits_updater or _shared_limits)(self._publish_limits)
+        self._grey_walls = (limits_updater or _shared_limits)(self._publish_held_limits)
         self._watches = [state.param.watch(self._ask, ["design", "band", "invalid"], what="value"),
                          state.param.watch(self._ask_held, ["held", "band"]),
                          state.param.watch(self._ask_limits, "judgement")]
         self.param.watch(self._ask_limits, ["page", "overview"])
+        self.param.watch(self._ask_held_limits, ["page", "held"])
 
     def start(self):
         """Ask for the first overview."""
@@ -98,7 +101,7 @@ class Session(param.Parameterized):
         self._closed = True
         for watch in self._watches:
             self.state.param.unwatch(watch)
-        for updater in (self._shown, self._grey, self._walls):
+        for updater in (self._shown, self._grey, self._walls, self._grey_walls):
             updater.close()
 
     def _ask(self, *events):
@@ -133,6 +136,13 @@ class Session(param.Parameterized):
         if self.page == "limits" and self.overview is not None:
             self._walls.want(self.overview.design, tuple(self.overview.band), self.state.judgement)
 
+    def _ask_held_limits(self, *_):
+        """Want the limits of the held design, where the page of the limits is."""
+        if self.held is None:
+            self.held_limits = None
+        elif self.page == "limits":
+            self._grey_walls.want(self.held.design, tuple(self.held.band), self.state.judgement)
+
     def _publish(self, outcome):
         """Take a result or a failure to the document."""
         self._in_document(self._take, outcome)
@@ -144,6 +154,10 @@ class Session(param.Parameterized):
     def _publish_limits(self, outcome):
         """Take the limits to the document."""
         self._in_document(self._take_limits, outcome)
+
+    def _publish_held_limits(self, outcome):
+        """Take the held design's limits to the document."""
+        self._in_document(self._take_held_limits, outcome)
 
     def _in_document(self, take, outcome):
         """Publish under the document's lock, or at once without a document; wait for a browser that is not there yet."""
@@ -174,6 +188,10 @@ class Session(param.Parameterized):
         if outcome.failure is None and outcome.wish == (self.state.held, self.state.band):
             self.held = outcome.result
 
+    def _take_held_limits(self, outcome):
+        """Publish the held design's limits if it is still held."""
+        if outcome.failure is None and self.held is not None and outcome.wish[0] == self.held.design:
+            self.held_limits = outcome.result
 
     def _take_limits(self, outcome):
         """Publish the limits, or why there are none."""

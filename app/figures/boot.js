@@ -20,7 +20,7 @@ const heights = new ResizeObserver((entries) => {
     const now = target.offsetHeight, wide = target.offsetWidth
     Object.assign(target.elastovox, { height: now, width: wide })
     if (KEEPS_HEIGHT.includes(key)) target.style.minHeight = wide === width ? `${now}px` : ""
-    if (height !== undefined && now !== height) viewOf(model)?.invalidate_layout()
+    if (now !== height) viewOf(model)?.invalidate_layout()
   }
 })
 const write = (model, key, change) => {
@@ -29,7 +29,7 @@ const write = (model, key, change) => {
     element = viewOf(model)?.shadow_el.querySelector(`[data-word="${key}"]`)
     if (!element) return
     model.elastovox_words = { ...model.elastovox_words, [key]: element }
-    element.elastovox = { model, key }
+    element.elastovox = { model, key, height: element.offsetHeight, width: element.offsetWidth }
     heights.observe(element)
   }
   change(element)

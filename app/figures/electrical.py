@@ -21,7 +21,7 @@ class Electrical:
 
     def __init__(self, inks, x_range):
         self.x_range = x_range
-        self.data = source("electrical", **EMPTY)
+        self.data, self.held = source("electrical", **EMPTY), source("held_electrical", **EMPTY)
         self.readings, self.cursors, self.corners, self.plots, self._parts = {}, [], [], {}, {}
         for name in NAMES:
             self.plots[name] = self._plot(inks, name)
@@ -42,6 +42,7 @@ class Electrical:
         parts["grid"] = source(x0=[], y0=[], x1=[], y1=[])
         self._parts[name] = parts
         gridlines(plot, inks, parts["grid"])
+        plot.add_glyph(self.held, inks(Line(x="x", y=SHOWN[name], line_width=1.5), line_color="held"))
         plot.add_glyph(self.data, inks(Line(x="x", y=SHOWN[name], line_width=1.8, line_join="round"), line_color="ink"))
         text(plot, inks, parts["labels"], text_align="right", text_baseline="middle", x_offset=-8)
         text(plot, inks, parts["ticks"], text_align="center", text_baseline="alphabetic", y_offset=13)
@@ -60,17 +61,18 @@ class Electrical:
     def show(self, view):
         """Replace everything by a LimitsView's."""
         found = view.response
-        magnitude, current = np.abs(found.impedance), np.abs(found.current)
-        values = {"x": np.log10(found.frequency), "frequency": found.frequency, "impedance": magnitude,
-                  "phase": np.degrees(np.angle(found.impedance)), "current": current,
-                  "log_impedance": _log(magnitude), "log_current": _log(current)}
-        self.data.data = {name: np.ascontiguousarray(column, dtype=np.float32) for name, column in values.items()}
+        values = self.data.data = _columns(found)
+        magnitude, current = values["impedance"], values["current"]
         limit = view.design.drive.current_limit
         self._axis("impedance", *_decades(magnitude), "Ω")
         self._axis("current", *_decades(current, limit), "A")
         self._phase(values["phase"])
         self._mark_limit(limit)
         self._mark_corner(found.charging_corner)
+
+    def hold(self, response):
+        """Draw another design's curves in grey; None: nothing."""
+        self.held.data = dict(EMPTY) if response is None else _columns(response)
 
     def _axis(self, name, low, high, unit):
         named = log_ticks(10.0**low, 10.0**high)
@@ -118,6 +120,15 @@ class Electrical:
             "x": [place] * seen, "y": [self.plots["phase"].y_range.end] * seen,
             "text": [f"71 % charged up to {theme.hertz(corner)}" if seen else ""] * seen,
             "align": ["right" if right else "left"] * seen, "shift": [-4 if right else 4] * seen}
+
+
+def _columns(found):
+    """The source's columns of a Response, float32."""
+    magnitude, current = np.abs(found.impedance), np.abs(found.current)
+    values = {"x": np.log10(found.frequency), "frequency": found.frequency, "impedance": magnitude,
+              "phase": np.degrees(np.angle(found.impedance)), "current": current,
+              "log_impedance": _log(magnitude), "log_current": _log(current)}
+    return {name: np.ascontiguousarray(column, dtype=np.float32) for name, column in values.items()}
 
 
 def frequencies(low, high):

@@ -73,6 +73,12 @@ class LimitsBoard:
                              "stem": [file_stem(view.design.name)], "html": [verdict_html(view)]}
             self.dim(None)
 
+    def hold(self, view):
+        """Keep a LimitsView in grey; None takes it away."""
+        with self._board.in_one():
+            self._window.hold(view and view.window)
+            self._electrical.hold(view and view.response)
+
     def dim(self, text):
         """Dim the plots and say the text over them; None lights them up again."""
         with self._board.in_one():

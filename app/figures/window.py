@@ -25,6 +25,8 @@ class Window:
         self.beyond = source("window_beyond", bias_kv=[], height_mm=[])
         self.mode_lines = source("window_modes", xs=[], ys=[])
         self.modes_beyond = source("window_modes_beyond", xs=[], ys=[])
+        self.held = source("held_window", bias_kv=[], height_mm=[])
+        self.held_modes = source("held_window_modes", xs=[], ys=[])
         self.wall_words = source("wall_words", x=[], y=[], text=[], align=[], shift=[], above=[])
         self.bias_words = source("bias_words", x=[], y=[], text=[], align=[], shift=[])
         self.walls = {name: [] for name in WALLS}
@@ -32,6 +34,8 @@ class Window:
         self._drawn = {}
         self.height = self._plot(inks, "window_plot", TOP, 6)
         self.modes = self._plot(inks, "tuning_plot", SMALL_TOP, BOTTOM)
+        self.height.add_glyph(self.held, inks(Line(x="bias_kv", y="height_mm", line_width=1.5), line_color="held"))
+        self.modes.add_glyph(self.held_modes, inks(MultiLine(xs="xs", ys="ys", line_width=1.2), line_color="held"))
         for data, glyph in ((self.stable, Line(x="bias_kv", y="height_mm", line_width=1.8)),
                             (self.beyond, Line(x="bias_kv", y="height_mm", line_width=1.5, line_dash=[4, 3]))):
             self.height.add_glyph(data, inks(glyph, line_color="ink"))
@@ -89,10 +93,19 @@ class Window:
         self.stable.data = {"bias_kv": kv[:turn], "height_mm": height[:turn]}
         after = slice(turn - 1, None) if turn < len(stable) else slice(0, 0)
         self.beyond.data = {"bias_kv": kv[after], "height_mm": height[after]}
-        with np.errstate(divide="ignore"):
-            modes = np.where(window.frequency > 0, np.log10(window.frequency), np.nan).astype(np.float32).T
+        modes = _log_modes(window)
         self.mode_lines.data = {"xs": [kv[:turn]] * len(modes), "ys": [m[:turn] for m in modes]}
         self.modes_beyond.data = {"xs": [kv[after]] * len(modes), "ys": [m[after] for m in modes]}
+
+    def hold(self, window):
+        """Draw another design's stable states in grey; None: nothing."""
+        if window is None:
+            self.held.data, self.held_modes.data = {"bias_kv": [], "height_mm": []}, {"xs": [], "ys": []}
+            return
+        n = int(window.stable.sum())
+        kv = _short(window.bias[:n] / 1e3)
+        self.held.data = {"bias_kv": kv, "height_mm": _short(window.centre_height[:n] * 1e3)}
+        self.held_modes.data = {"xs": [kv] * window.frequency.shape[1], "ys": list(_log_modes(window)[:, :n])}
 
     def _axes(self, window):
         end = self.x_range.end
@@ -144,6 +157,12 @@ class Window:
             "x": places, "y": [self.height.y_range.end] * len(places), "text": [said for _, said in words.values()],
             "align": [align for align, _ in sides], "shift": [shift for _, shift in sides],
             "above": [ROWS[name] for name in words]}
+
+
+def _log_modes(window):
+    """log10 of the mode frequencies (n_modes, n_bias), NaN where a mode has none."""
+    with np.errstate(divide="ignore"):
+        return np.where(window.frequency > 0, np.log10(window.frequency), np.nan).astype(np.float32).T
 
 
 def side(part):

@@ -17,6 +17,7 @@ class LimitsPage:
         self.session, self._response = session, response
         self.board = None
         session.param.watch(self.turn, "page")
+        session.param.watch(self.hold, "held_limits")
         session.param.watch(self.show, ["limits", "limits_fault", "problem", "overview"])
 
     def turn(self, *_):
@@ -42,8 +43,14 @@ class LimitsPage:
         problem = session.problem
         self.board.dim(problem.text if problem else session.limits_fault or None)
 
+    def hold(self, *_):
+        """Keep the held design's limits in grey."""
+        if self.board is not None:
+            self.board.hold(self.session.held_limits)
+
     def _build(self):
         self.board = LimitsBoard(self._response.board, self._move_bias)
+        self.hold()
         for name in ("window", "electrical", "verdict"):
             part = getattr(self.board, name)
             part.css_classes = [f"region-{name}-part"]

@@ -224,3 +224,27 @@ def test_runs_and_axes():
     assert list(log_ticks(45, 1200)) == [50, 100, 200, 500, 1000]
     low, high = nice_range(11.0, 18.0)
     assert low < 11 and high > 18 and nice_range(1.0, 8.0)[0] == 0.0
+
+
+def test_the_held_design_is_grey_in_every_picture_and_goes(board, bench):
+    other = viewed(Design().with_values({"film.prestretch": 1.4}))
+    board.show(bench)
+    board.hold(other)
+    n = int(other.window.stable.sum())
+    np.testing.assert_allclose(board._window.held.data["bias_kv"], other.window.bias[:n] / 1e3, rtol=2 * FLOAT32)
+    np.testing.assert_allclose(board._window.held.data["height_mm"], other.window.centre_height[:n] * 1e3, rtol=2 * FLOAT32)
+    assert len(board._window.held_modes.data["ys"]) == other.window.frequency.shape[1]
+    np.testing.assert_allclose(board._electrical.held.data["current"], np.abs(other.response.current), rtol=2 * FLOAT32)
+    np.testing.assert_allclose(board._electrical.data.data["current"], np.abs(bench.response.current), rtol=2 * FLOAT32)
+    board.hold(None)
+    assert all(len(source.data[column]) == 0 for source, column in (
+        (board._window.held, "bias_kv"), (board._window.held_modes, "xs"), (board._electrical.held, "x")))
+
+
+def test_hold_reaches_the_page_of_the_limits(page):
+    session, _, made, _ = page
+    session.page = "limits"
+    session.hold()
+    assert session.held_limits is not None and len(made.board._window.held.data["bias_kv"]) > 10
+    session.hold()
+    assert session.held_limits is None and len(made.board._window.held.data["bias_kv"]) == 0
