@@ -5,7 +5,7 @@ from functools import lru_cache
 
 import numpy as np
 
-from engine import harmonic
+from engine import balance, harmonic
 from engine.design import Listener
 from engine.errors import InvalidDesign
 from engine.response import DEFAULT_BAND, basis_for, level, transfer
@@ -35,7 +35,7 @@ class Distortion:
     amplitude: float                 # V
 
 
-def distortion(design, frequency, amplitude=None, n_harmonics=8):
+def distortion(design, frequency, amplitude=None, n_harmonics=8, thorough=True):
     """Harmonics of a design's sound at each frequency, by harmonic balance with the full film force.
 
     Parameters
@@ -43,8 +43,10 @@ def distortion(design, frequency, amplitude=None, n_harmonics=8):
     frequency : (n_freq,) Hz, of the fundamental.
     amplitude : V, peak; None: the design's.
     n_harmonics : the fundamental counted as one.
+    thorough : follow the motion from small amplitudes with Newton's method where the fixed point fails.
 
-    Returns: Distortion. A frequency at which the balance does not settle has converged False and a finding.
+    Returns: Distortion. A frequency at which the balance does not settle has converged False, a finding, and the linear
+    motion in place of the harmonics.
     Raises: NoRestState, NotConverged (see equilibrium); InvalidDesign for what cannot be computed.
     """
     f = _checked(frequency, n_harmonics)
@@ -55,7 +57,7 @@ def distortion(design, frequency, amplitude=None, n_harmonics=8):
     drive = _components(waveform(design.drive, phase), phase, order)
     # the inverses of so many frequencies at a time
     step = max(1, MOST_NUMBERS//(n_harmonics*len(basis_for(design, _top(f))[1].shapes)**2))
-    return _joined([_solve(design, part, order, phase, np.broadcast_to(drive, (len(part), len(order))), _top(f))
+    return _joined([_solve(design, part, order, phase, np.broadcast_to(drive, (len(part), len(order))), _top(f), thorough)
                     for part in np.split(f, np.arange(step, len(f), step))])
 
 
@@ -73,13 +75,13 @@ def _joined(parts):
     return Distortion(**every)
 
 
-def _solve(design, f, order, phase, drive, top):
+def _solve(design, f, order, phase, drive, top, thorough=True):
     """Distortion at fundamentals f (n_freq,) for source components drive (n_freq, n_harmonics+1)."""
     system, basis = basis_for(design, top)
     omega = 2*np.pi*f[:, None]*order
     task = _problem(replace(design, name="-", note="", drive=replace(design.drive, amplitude=0.0, law="sine"),
                             listener=Listener()), f.tobytes(), len(order), len(phase), top)
-    solved = harmonic.balance(task, drive)
+    solved = balance.balance(task, drive, thorough)
     pressure = _pressure(design, system, basis, task, omega, solved)
     power = np.abs(pressure)**2
     harmonics, total = np.sqrt(power[:, 1:].sum(axis=1)), np.sqrt(power.sum(axis=1))
@@ -232,7 +234,7 @@ def _per_volt(design, system, basis, frequency):
     n_basis = len(basis.shapes)
     volt = np.zeros((known.sum(), 2), complex)
     volt[:, 1] = 1.0
-    new = harmonic.linear_answer(task, volt)
+    new = harmonic.linear_answer(task, volt, np.arange(len(volt)))
     T = transfer(system, basis, frequency[known], design.listener.distance, design.listener.angle)
     from_motion[known] = np.sum(T*new[:, 1, :n_basis], axis=1)
     return from_motion
@@ -282,7 +284,7 @@ def intermodulation(design, f1, f2, amplitude=None, ratio=1.0, most=3):
     omega = 2*np.pi*frequency[None]
     task = harmonic.problem(system, basis, omega, theta)
     drive = harmonic.components(task, signal[None, :, None])[..., 0]
-    solved = harmonic.balance(task, drive)
+    solved = balance.balance(task, drive)
     pressure = _pressure(design, system, basis, task, omega, solved)[0]
     at = {tuple(o): abs(p) for o, p in zip(order[1:], pressure, strict=True)}
     tone = at[0, 1]

@@ -25,7 +25,7 @@ radiation_tables radiation
 rear
 circuit source linear modes motion
 response window
-cycle inverses harmonic distortion
+cycle inverses harmonic balance distortion
 limits
 summary
 """.split()
