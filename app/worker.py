@@ -5,18 +5,21 @@ import functools
 import logging
 import sys
 import threading
+import time
 from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass
 
 from threadpoolctl import threadpool_limits
 
 import engine
-from engine.errors import InvalidDesign, NoRestState, NotConverged
+from engine.errors import InvalidDesign, NoRestState, NotConverged, Stopped
 
 N_THREADS = 2            # one visitor dragging must not make another wait for a whole computation
 SWITCH_INTERVAL = 1e-3   # s a computing thread may keep the interpreter while the event loop waits for it
 REMEMBERED = 24          # overviews kept for the whole process: undo, redo and a sample's first sight cost nothing
-KINDS = {InvalidDesign: "invalid", NoRestState: "no rest state", NotConverged: "not converged"}
+N_LONG = 1               # long computations at a time; the others wait
+PROGRESS_EVERY = 0.2     # s between two words of progress
+KINDS = {Stopped: "stopped", InvalidDesign: "invalid", NoRestState: "no rest state", NotConverged: "not converged"}
 
 log = logging.getLogger(__name__)
 
@@ -25,7 +28,7 @@ log = logging.getLogger(__name__)
 class Failure:
     """Why there is no result."""
 
-    kind: str                # "invalid", "no rest state", "not converged" or "unexpected"
+    kind: str                # "invalid", "no rest state", "not converged", "stopped" or "unexpected"
     text: str
     key: str | None = None
 
@@ -46,6 +49,7 @@ class Worker:
         pin_blas()
         sys.setswitchinterval(SWITCH_INTERVAL)
         self.executor = ThreadPoolExecutor(n_threads, thread_name_prefix="compute")
+        self.long = ThreadPoolExecutor(N_LONG, thread_name_prefix="long")
         self.overview = functools.lru_cache(maxsize=REMEMBERED)(_overview)
         self.limits = functools.lru_cache(maxsize=REMEMBERED)(self._limits)
 
@@ -53,6 +57,76 @@ class Worker:
         """`engine.limits_view` of an overview, which is computed or remembered."""
         seen = self.overview(design, band)
         return engine.limits_view(design, seen.response, seen.excursion, seen.key_figures.mean_level_db, judgement)
+
+
+class Job:
+    """A long computation of one session, in the background: at most one at a time, with progress, and stopped at will.
+
+    Parameters
+    ----------
+    tell : callable
+        Called on the event loop's thread with a `Stage`: now and then while it works, and once at its end.
+    executor : concurrent.futures.Executor
+        Threads for long work alone: they never keep a slider waiting.
+    """
+
+    def __init__(self, tell, executor):
+        self._tell, self._executor, self._stop = tell, executor, None
+
+    @property
+    def busy(self):
+        """Whether something is under way."""
+        return self._stop is not None
+
+    def start(self, compute, *wish):
+        """Begin ``compute(*wish, progress, stop)``; what is under way is stopped and never heard of again.
+
+        progress takes the part done, 0 to 1; stop tells whether to end, upon which compute raises `Stopped`, or returns what
+        it has.
+        """
+        self.stop(silently=True)
+        loop, stop, told = asyncio.get_running_loop(), threading.Event(), [0.0]
+        self._stop = stop
+
+        def here(stage):
+            if self._stop is stop:
+                if stage.outcome is not None:
+                    self._stop = None
+                self._tell(stage)
+
+        def progress(part):
+            now = time.monotonic()
+            if now - told[0] > PROGRESS_EVERY:
+                told[0] = now
+                loop.call_soon_threadsafe(here, Stage(float(part), now - begun))
+
+        def work():
+            outcome = attempt(lambda *given: compute(*given, progress, stop.is_set), wish)
+            loop.call_soon_threadsafe(here, Stage(1.0, time.monotonic() - begun, outcome))
+
+        begun = time.monotonic()
+        self._executor.submit(work)
+
+    def stop(self, silently=False):
+        """End what is under way; it is told as stopped unless ``silently``."""
+        if self._stop is not None:
+            self._stop.set()
+            if silently:
+                self._stop = None
+
+
+@dataclass(frozen=True)
+class Stage:
+    """How far a job is: the part done, the seconds so far, and at its end the `Outcome`."""
+
+    part: float
+    seconds: float
+    outcome: Outcome | None = None
+
+    @property
+    def seconds_left(self):
+        """Seconds still to go at the pace so far; None while nothing can be said."""
+        return self.seconds*(1 - self.part)/self.part if self.part > 0.02 else None
 
 
 class Updater:

@@ -1,4 +1,4 @@
-"""The three ways a computation may refuse an answer."""
+"""The ways a computation may end without an answer."""
 
 
 class InvalidDesign(ValueError):
@@ -19,6 +19,10 @@ class InvalidDesign(ValueError):
 
 class NotConverged(RuntimeError):
     """An iteration that did not reach its tolerance."""
+
+
+class Stopped(RuntimeError):
+    """A long computation that was told to stop."""
 
 
 class NoRestState(RuntimeError):
