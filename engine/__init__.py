@@ -15,7 +15,15 @@ from engine.distortion import (
     distortion,
     intermodulation,
 )
-from engine.errors import InvalidDesign, NoRestState, NotConverged
+from engine.distortion_view import (
+    AmplitudeSeries,
+    DistortionMap,
+    DistortionView,
+    amplitude_series,
+    distortion_map,
+    distortion_view,
+)
+from engine.errors import InvalidDesign, NoRestState, NotConverged, Stopped
 from engine.limits import Excursion, Judgement, LimitsView, Margin, breakdown_band, excursion, limits_view, margins
 from engine.modes import Modes, modes
 from engine.response import Response, prepare, response
@@ -24,9 +32,10 @@ from engine.summary import KeyFigures, Overview, energy_share, key_figures, over
 from engine.window import VoltageWindow, voltage_window
 
 __all__ = [
-    "Air", "Centre", "CompensatedDrive", "Design", "Distortion", "Drive", "Electrodes", "Equilibrium", "Excursion",
-    "Film", "Finding", "Geometry", "Intermodulation", "InvalidDesign", "Judgement", "KeyFigures", "LimitsView",
-    "Listener", "Margin", "Modes", "NoRestState", "NotConverged", "Overview", "Rear", "Response", "VoltageWindow",
-    "breakdown_band", "compensated_drive", "distortion", "energy_share", "equilibrium", "excursion",
-    "intermodulation", "key_figures", "limits_view", "load", "margins", "modes", "overview", "prepare", "response",
-    "save", "voltage_window"]
+    "Air", "AmplitudeSeries", "Centre", "CompensatedDrive", "Design", "Distortion", "DistortionMap", "DistortionView",
+    "Drive", "Electrodes", "Equilibrium", "Excursion", "Film", "Finding", "Geometry", "Intermodulation",
+    "InvalidDesign", "Judgement", "KeyFigures", "LimitsView", "Listener", "Margin", "Modes", "NoRestState",
+    "NotConverged", "Overview", "Rear", "Response", "Stopped", "VoltageWindow", "amplitude_series", "breakdown_band",
+    "compensated_drive", "distortion", "distortion_map", "distortion_view", "energy_share", "equilibrium",
+    "excursion", "intermodulation", "key_figures", "limits_view", "load", "margins", "modes", "overview", "prepare",
+    "response", "save", "voltage_window"]

@@ -26,6 +26,7 @@ rear
 circuit source linear modes motion
 response window
 cycle inverses harmonic balance distortion
+distortion_view
 limits
 summary
 """.split()
