@@ -59,7 +59,7 @@ class Basis:
     modes: Modes
     shapes: np.ndarray               # (n_modes+n_static, n_dof), modes first, wet-mass-orthogonal
     tables: radiation.Tables
-    projected: tuple                 # (resistance, reactance), each (K, n, n): see radiation.project_tables
+    projected: np.ndarray            # (2, K, n, n): resistance, reactance, see radiation.project_tables
     refined: np.ndarray | None = None    # (n_modes,) Hz: the frequency with the air's mass at that frequency
 
 

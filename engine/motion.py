@@ -4,13 +4,15 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from engine import circuit, linear, material, radiation
+from engine import linear, radiation
+from engine.bands import Level, solve_band
 from engine.modes import Basis
-from engine.radiation_tables import chebyshev_matrix, chebyshev_nodes
 from engine.statics import frozen
 
 GRID_POINTS = 240               # of the even log grid, before refinement at resonances
 FEW_MODES = 14                  # below so many unknowns another octave costs more than it saves
+MANY = 40                       # from so many unknowns on, and so many times frequencies, an octave makes two bands
+MANY_SOLVED = 4000
 
 
 @dataclass(frozen=True)
@@ -40,22 +42,57 @@ def frequency_grid(basis, low, high, n_points=GRID_POINTS):
 
 
 def solve_motion(system, basis, frequency):
-    """Motion at the given ascending frequencies, octave by octave from the top.
+    """Motion at the given ascending frequencies, octave by octave from the top, in bands.
 
     An octave's unknowns are the modes up to twice its upper end and the static answer of everything above them, so
     every mode keeps its contribution at every frequency. Source: DEVELOPERS.md, "Response".
     """
     reduced = reduce(system, basis)
+    level = _whole(system, basis, reduced, frequency[-1])
     parts = []
     stop = len(frequency)
     while stop > 0:
         top = frequency[stop - 1]
         n_low = int(np.searchsorted(basis.modes.frequency, 2*top))
+        level = _lower(level, reduced, n_low)
         start = 0 if n_low < FEW_MODES else int(np.searchsorted(frequency, top/2, side="right"))
-        parts.append(_octave(system, basis, reduced, frequency[start:stop], n_low))
+        for low, high in _split(frequency, start, stop, level.loads.shape[1]):
+            q, *rest = solve_band(system, basis, level, frequency[low:high])
+            unit = q if not len(level.columns) else np.concatenate(
+                [q[:, :n_low], q[:, n_low:] @ level.columns.T], axis=1)
+            parts.append((unit, *rest))
         stop = start
     return Motion(system, basis, frozen(np.array(frequency)),
                   *(frozen(np.concatenate(part[::-1])) for part in zip(*parts, strict=True)))
+
+
+def _split(frequency, start, stop, n):
+    """(low, high) of the bands of an octave of n unknowns, from the top."""
+    middle = int(np.searchsorted(frequency, np.sqrt(frequency[start]*frequency[stop - 1])))
+    many = n >= MANY and n*(stop - start) >= MANY_SOLVED
+    return [(middle, stop), (start, middle)] if many and middle > start else [(start, stop)]
+
+
+def _whole(system, basis, reduced, top):
+    """Level of the whole basis."""
+    x = 2*np.pi*top*system.frame_radius/system.air.sound_speed
+    far = radiation.far_field_series(system.projector @ basis.shapes.T, x)
+    n_modes = len(basis.modes.frequency)
+    return Level(reduced.real, reduced.constant_loss, reduced.loads, basis.projected, far,
+                 basis.modes.frequency, np.eye(len(basis.shapes) - n_modes))
+
+
+def _lower(level, reduced, n_low):
+    """Level of the lowest n_low modes and the static answers of everything above, out of the level above it."""
+    n_before = len(level.frequency)
+    if n_low >= n_before:
+        return level
+    columns = _above(reduced, n_low)
+    # the static answers lie in what the level above spans: its modes above n_low, its own columns
+    into = np.concatenate([columns[:n_before - n_low], level.columns.T @ columns[n_before - n_low:]])
+    real, loss, air = (_project(X, n_low, into) for X in (level.real, level.constant_loss, level.air))
+    loads, series = (np.concatenate([X[:, :n_low], X[:, n_low:] @ into], axis=1) for X in (level.loads, level.far[1]))
+    return Level(real, loss, loads, air, (level.far[0], series), level.frequency[:n_low], columns)
 
 
 @dataclass(frozen=True)
@@ -79,18 +116,14 @@ def reduce(system, basis):
                     np.linalg.solve(K, np.concatenate([loads, v[None]]).T))
 
 
-def _above(reduced, n_low, n_modes):
+def _above(reduced, n_low):
     """(n_basis - n_low, n) orthonormal columns: the static answers of everything above the first n_low modes."""
-    if n_low == n_modes:
-        return np.eye(reduced.loads.shape[1] - n_low)
     u, sizes, _ = np.linalg.svd(reduced.static[n_low:], full_matrices=False)
     return u[:, sizes > 1e-9*sizes[0]] if sizes[0] > 0 else u[:, :0]
 
 
 def _project(X, n_low, above):
     """(..., n, n) of matrices (..., n_basis, n_basis) on the first n_low vectors and the columns above them."""
-    if n_low + above.shape[1] == X.shape[-1]:
-        return X
     right = X[..., n_low:] @ above
     n = n_low + above.shape[1]
     out = np.empty((*X.shape[:-2], n, n))
@@ -101,58 +134,3 @@ def _project(X, n_low, above):
     return out
 
 
-def dynamic_stiffness(system, omega, at, real, loss, resistance, reactance):
-    """Dynamic stiffness Z (n_freq, n, n) complex, and omega Re(air's impedance) of one side (n_freq, n, n).
-
-    Parameters: omega (n_freq,) rad/s; at (n_freq, n_terms): weights of the air's tables; real (3, n*n): K + K_rear, D0,
-    M; loss (1, n*n); resistance, reactance (n_terms, n*n) of the air.
-    """
-    n = int(np.sqrt(real.shape[1]))
-    x = omega*system.frame_radius/system.air.sound_speed
-    S = material.viscous_modulus(omega, *system.film_losses)
-    # i omega N_s Z = N_s eps rho b^3 omega^2 (i x A - B)
-    per_side = 2*np.pi*system.air.density*system.frame_radius**3*omega**2
-    faces = system.rear.faces*system.air_load
-    one = np.ones_like(omega)
-    Z = np.empty((len(omega), n, n), complex)
-    Z.real = (np.column_stack([one, S.real, -omega**2, -(faces*per_side)[:, None]*at])
-              @ np.concatenate([real, reactance])).reshape(-1, n, n)
-    radiated = ((per_side*x)[:, None]*at) @ resistance
-    Z.imag = (faces*radiated + np.column_stack([S.imag, one]) @ np.concatenate([real[1:2], loss])).reshape(-1, n, n)
-    return Z, radiated.reshape(-1, n, n)
-
-
-def _local_tables(basis, x):
-    """Weights (n_freq, n) and the air's tables (n, n_basis, n_basis) at n places within the range of x = k b.
-
-    Over an octave the load is a smooth function that a few Chebyshev points carry (it is of exponential type 2 in x);
-    where they are no fewer than the tables' terms, the tables serve as they are.
-    """
-    reach = np.ptp(x)
-    n = int(np.ceil(reach + 4.5*np.cbrt(reach) + 5))
-    if n >= basis.tables.n_terms:
-        return radiation.interpolation(x, basis.tables), *basis.projected
-    places, to_coefficients = chebyshev_nodes(n)
-    at = radiation.interpolation(x.min() + reach*places, basis.tables)
-    weights = chebyshev_matrix((x - x.min())/max(reach, 1e-300), n) @ to_coefficients
-    return weights, *((at @ t.reshape(len(t), -1)).reshape(n, *t.shape[1:]) for t in basis.projected)
-
-
-def _octave(system, basis, reduced, frequency, n_low):
-    """Motion's unit, power, line and charge of one octave whose unknowns start with n_low modes."""
-    above = _above(reduced, n_low, len(basis.modes.frequency))
-    n = n_low + above.shape[1]
-    omega = 2*np.pi*frequency
-    at, *air = _local_tables(basis, omega*system.frame_radius/system.air.sound_speed)
-    matrices = (_project(X, n_low, above).reshape(-1, n*n) for X in (reduced.real, reduced.constant_loss, *air))
-    Z, radiated = dynamic_stiffness(system, omega, at, *matrices)
-    loads = np.concatenate([reduced.loads[:, :n_low], reduced.loads[:, n_low:] @ above], axis=1)
-    each = np.linalg.solve(Z, np.broadcast_to(loads.T, (len(frequency), *loads.T.shape)).astype(complex))
-    compliance = loads @ each
-    line = circuit.voltages(system.circuit, omega, compliance)
-    q = (each @ line[..., None])[..., 0]
-    # omega^2/2 q^H Re Z q of one side
-    parts = np.stack([q.real, q.imag], axis=2)
-    power = omega/2*np.sum((radiated @ parts)*parts, axis=(1, 2))
-    unit = np.concatenate([q[:, :n_low], q[:, n_low:] @ above.T], axis=1)
-    return unit, power, line, circuit.charge(system.circuit, line, compliance)

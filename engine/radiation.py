@@ -9,6 +9,8 @@ Source: Rayleigh integral in wavenumber space (King 1934); Hankel transform of t
 Principles of Optics, appendix VII; expansion of baffled sources in them: Aarts & Janssen 2009.
 """
 
+from functools import lru_cache
+
 import numpy as np
 
 from engine.errors import InvalidDesign
@@ -27,10 +29,10 @@ from engine.radiation_tables import (
     tables,
 )
 
-__all__ = ["Tables", "azimuth", "depth_estimate_limit", "disk", "disk_points", "far_field", "impedance",
-           "impedance_tables", "interpolation", "listener_transfer", "low_frequency_mass", "n_polynomials",
-           "points_per_segment", "prepare", "project", "project_tables", "projection_matrix", "static_mass_matrix",
-           "tables"]
+__all__ = ["Tables", "azimuth", "depth_estimate_limit", "disk", "disk_points", "far_field", "far_field_series",
+           "gauss_legendre", "impedance", "impedance_tables", "interpolation", "listener_transfer", "low_frequency_mass",
+           "n_polynomials", "points_per_segment", "prepare", "project", "project_tables", "projection_matrix",
+           "radiation_rule", "static_mass_matrix", "tables"]
 
 NEAREST = 1e-3            # of the source's size: closer than this the listener is on the surface
 DEPTH_LIMIT = ((0.1, 12.0), (0.2, 1.0), (0.3, 0.75), (0.4, 0.643))     # height/b, k b; see depth_estimate_limit
@@ -108,7 +110,7 @@ def project_tables(coefficients, tables):
     """The tables projected on m shapes.
 
     Parameters: coefficients (J, m), J at most tables.n_polynomials; tables.
-    Returns: resistance and reactance (K, m, m) each, symmetric: Chebyshev coefficients of c' A c/x^(2n) and c' B c.
+    Returns: resistance and reactance (2, K, m, m), symmetric: Chebyshev coefficients of c' A c/x^(2n) and c' B c.
     With T = interpolation(x, tables),
 
         Z(x) = eps rho c b^2 [x^(2+2n) T @ resistance + i x T @ reactance].
@@ -121,7 +123,7 @@ def project_tables(coefficients, tables):
         left = c.T @ stack[:len(c)].reshape(len(c), -1)
         both = (left.reshape(-1, size)[:, :len(c)] @ c).reshape(m, 2, last - first, m)
         out[:, first:last] = both.transpose(1, 2, 0, 3)
-    return out[0], out[1]
+    return out
 
 
 def impedance_tables(coefficients, tables):
@@ -179,11 +181,32 @@ def far_field(coefficients, s, order=0):
     Returns: s.shape + (m,).
     """
     s = np.asarray(s, dtype=float)
+    top, series = far_field_series(coefficients, np.max(s, initial=0.0), order)
+    return (chebyshev_matrix(np.square(s / top), len(series)) @ series) * s[..., None] ** order
+
+
+def far_field_series(coefficients, s_max, order=0):
+    """(top, series (K, m)): Chebyshev coefficients in s^2 over [0, top^2] of Phi(s)/s^n of m shapes, top >= s_max."""
     J = len(coefficients)
-    top, rows = table_range(np.max(s, initial=0.0)), -(-J // ROUNDING) * ROUNDING
+    top, rows = table_range(s_max), -(-J // ROUNDING) * ROUNDING
     table = kept(("far", top, order, rows), lambda: _far_table(top, rows, order))
-    T = chebyshev_matrix(np.square(s / top), len(table))
-    return (T @ (table[:, :J] @ coefficients)) * s[..., None] ** order
+    return top, table[:, :J] @ coefficients
+
+
+def radiation_rule(x):
+    """Nodes sqrt(1-u^2) and weights (n,) on 0 < u < 1 for int |Phi(x sqrt(1-u^2))|^2 du, k b up to x.
+
+    The integrand is even in u and of exponential type 2 x: the positive half of a Gauss-Legendre rule, to some 1e-13.
+    """
+    u, weight = gauss_legendre(2 * int(np.ceil(0.5 * (x + 6.5 * np.cbrt(x) + 8.0))))
+    half = u > 0.0
+    return np.sqrt(1.0 - u[half] ** 2), weight[half]
+
+
+@lru_cache
+def gauss_legendre(n_points):
+    """Gauss-Legendre rule on [-1, 1]: (points, weights)."""
+    return np.polynomial.legendre.leggauss(n_points)
 
 
 def _far_table(top, J, order):

@@ -23,7 +23,7 @@ film
 branch statics
 radiation_tables radiation
 rear
-circuit source linear modes motion
+circuit source linear modes bands motion
 response window
 cycle inverses harmonic balance distortion
 distortion_view
