@@ -28,7 +28,7 @@ class Level:
     """The unknowns of an octave and below: the lowest modes and the static answers of everything above them.
 
     real (3, n, n): K + K_rear, D0, M; constant_loss (n, n); loads (n_line, n); air (2, K, n, n): tables of the air's
-    resistance and reactance; far: what radiation.far_field_series gives, series (K_far, n);
+    resistance and reactance;
     frequency (n_low,) Hz of the modes, ascending; columns (n_basis - n_low, n - n_low): the other unknowns on the basis.
     """
 
@@ -36,7 +36,6 @@ class Level:
     constant_loss: np.ndarray
     loads: np.ndarray
     air: np.ndarray
-    far: tuple
     frequency: np.ndarray
     columns: np.ndarray
 
@@ -62,7 +61,7 @@ def dynamic_stiffness(system, omega, at, real, loss, resistance, reactance):
 
 
 def solve_band(system, basis, level, frequency):
-    """Motion of a level's unknowns (n_freq, n), radiated power (n_freq,), line (n_freq, n_line), charge (n_freq,)."""
+    """Motion of a level's unknowns (n_freq, n), line (n_freq, n_line) and charge (n_freq,) per volt."""
     omega = 2*np.pi*frequency
     reach = (omega[-1] - omega[0])*system.frame_radius/system.air.sound_speed
     n_places = max(int(np.ceil(reach + 4.5*np.cbrt(reach) + 5)), PLACES)
@@ -81,7 +80,7 @@ def solve_band(system, basis, level, frequency):
     each, compliance = found or _direct(level.loads, Z, T)
     line = circuit.voltages(system.circuit, omega, compliance)
     q = (each @ line[..., None])[..., 0]
-    return q, _power(system, level, omega, places, T, q), line, circuit.charge(system.circuit, line, compliance)
+    return q, line, circuit.charge(system.circuit, line, compliance)
 
 
 def _direct(loads, Z, T):
@@ -97,7 +96,7 @@ def _near(level, frequency, n_places):
     middle, half = (frequency[-1] + frequency[0])/2, (frequency[-1] - frequency[0])/2
     near = slice(*np.searchsorted(level.frequency, (middle - APART*half, middle + APART*half)).tolist())
     n, n_near, n_freq = level.loads.shape[1], near.stop - near.start, len(frequency)
-    pays = n >= FEW_MODES and n_places*n**3 + n_freq*n_near**3 < WORTH*n_freq*n**3
+    pays = n >= FEW_MODES and 1.3*n_places + n_freq*(n_near/n)**2.2 < WORTH*n_freq      # times as measured
     return near if pays and n_near else None
 
 
@@ -129,15 +128,3 @@ def _condensed(loads, Z, near, to_coefficients, T):
         each[some, far] = X[..., n_near:] - X[..., :n_near] @ at_near
         compliance[some] = effective.transpose(0, 2, 1) @ at_near + far_compliance
     return each, compliance
-
-
-def _power(system, level, omega, places, T, q):
-    """(n_freq,) W/V2 radiated to one side: rho c b^2 2 pi x^2 int |Phi(x sqrt(1-u^2))|^2 du omega^2/2, Phi the far field."""
-    b, c = system.frame_radius, system.air.sound_speed
-    direction, weight = radiation.radiation_rule(omega[-1]*b/c)
-    top, series = level.far
-    s = places[:, None]*b/c*direction
-    fields = chebyshev_matrix(np.square(s/top), len(series)) @ series           # (n_places, n_directions, n)
-    fields = (T @ fields.reshape(len(places), -1)).reshape(len(omega), len(weight), -1)
-    made = np.square(fields @ np.stack([q.real, q.imag], axis=2)).sum(axis=2) @ weight
-    return np.pi*system.air.density*b**4/c*omega**4*made

@@ -1,6 +1,7 @@
 """Finding and following the stable branch of rest states: Newton's method, descent, continuation in voltage."""
 
 import numpy as np
+from scipy.linalg.lapack import dposv, dpotrf
 
 from engine import film as flm
 from engine import mesh as msh
@@ -13,23 +14,28 @@ SETTLED = 3e-6           # Newton step, relative to the frame radius, after whic
 
 def is_stable(K):
     """Whether the tangent is positive definite, by a margin above round-off."""
-    margin = 1e-10*np.trace(K)/len(K)
-    try:
-        np.linalg.cholesky(K - margin*np.eye(len(K)))
-    except np.linalg.LinAlgError:
-        return False
-    return True
+    shifted = K.copy()
+    shifted.flat[::len(K) + 1] -= 1e-10*np.trace(K)/len(K)
+    return dpotrf(shifted.T, lower=1, overwrite_a=1)[1] == 0
+
+
+def solve(K, g):
+    """K^-1 g of a symmetric matrix, by Cholesky where it is positive definite; None where it is singular."""
+    _, x, failed = dposv(K.T, g, lower=1)       # the transposed view is in the order that LAPACK reads
+    if failed:
+        try:
+            x = np.linalg.solve(K, g)
+        except np.linalg.LinAlgError:
+            return None
+    return x
 
 
 def newton(film, q, voltage, most=12, settled=SETTLED):
     """Plain Newton iteration: (state, tangent), or None where it does not converge in a few steps."""
     for _ in range(most):
         energy, g, K = flm.linearise(film, q, voltage)
-        if not np.isfinite(energy) or not np.all(np.isfinite(K)):
-            return None
-        try:
-            step = np.linalg.solve(K, g)
-        except np.linalg.LinAlgError:
+        step = solve(K, g) if np.isfinite(energy) and np.isfinite(K.sum()) else None
+        if step is None:
             return None
         q = q - step
         size = np.max(np.abs(step))
@@ -91,8 +97,9 @@ def unbiased(film):
                               "the limit in film.law_parameters.", "stretch-limit")
     with np.errstate(all="ignore"):
         found = newton(film, q, 0.0)
-        if found is None or not is_stable(found[1]):
-            found = descend(film, q)
+        if found is not None and is_stable(found[1]):
+            return found
+        found = descend(film, q)
     if not is_stable(found[1]):
         raise NoRestState("The film is slack without voltage and has no stiffness of its own: raise the prestretch, or "
                           "the height at which the spring is unloaded.", "slack")
@@ -118,7 +125,7 @@ def march(film, q, K, start, stop, settled=SETTLED):
         if s >= goal:
             return
         step = min(step, goal - s)
-        predicted = step*np.linalg.solve(K, flm.electrode_load(film, q, 1.0))
+        predicted = step*solve(K, flm.electrode_load(film, q, 1.0))
         moved = np.max(np.abs(predicted))
         near = 0.5*moved + 1e-3*film.mesh.edges[-1]
         voltage = float(np.sqrt(2*(s + step))) if s + step < goal else stop
@@ -138,7 +145,8 @@ def march(film, q, K, start, stop, settled=SETTLED):
 
 def graded_edges(a, b, n_elements):
     """Edges graded towards a small centre: half of the density even, half logarithmic."""
-    r0 = np.geomspace(a, b, 400)
+    r0 = a*np.exp(np.log(b/a)*np.linspace(0.0, 1.0, 400))
+    r0[-1] = b
     return msh.equidistributed(1/(b - a) + 1/(r0*np.log(b/a)), r0, n_elements)
 
 

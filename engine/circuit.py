@@ -60,7 +60,7 @@ def build(film, q, voltage, electrodes, drive, layers, band):
 def _line(film, q, voltage):
     """Nodal capacitance (n_nodes,) F and Gamma (n_dof, n_nodes) N/V."""
     e = flm.strain(film, q)
-    rows, _ = flm.strain_rows(film, e)
+    rows = flm.strain_rows(film, e)
     p1, nodes = film.mesh.order + 1, film.mesh.nodes
     c = np.zeros(film.mesh.n_nodes)
     np.add.at(c, nodes, film.areal_capacitance*film.area*e.A*e.B)

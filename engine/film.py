@@ -5,12 +5,12 @@ only rises) and r, z of every node between it and the frame. Notation of DEVELOP
 """
 
 from dataclasses import dataclass
-from functools import cached_property
+from functools import cached_property, lru_cache
 
 import numpy as np
 
 from engine import material
-from engine.mesh import Mesh
+from engine.mesh import Mesh, derivative_products, reference_derivative
 
 VACUUM_PERMITTIVITY = 8.8541878128e-12      # F/m, CODATA 2018
 
@@ -33,14 +33,10 @@ class Film:
     spring_rate: float
     spring_free_height: float
 
-    @cached_property
+    @property
     def dofs(self):
         """(n_elements, 2(order+1)) places of an element's r then z in q; fixed ones point at the extra place n_dof."""
-        n = self.mesh.n_nodes
-        place = np.arange(-1, 2*n - 1).reshape(n, 2)    # node j: r at 2j-1, z at 2j
-        place[0] = 2*n - 3, 0
-        place[-1] = 2*n - 3
-        return place[self.mesh.nodes].transpose(0, 2, 1).reshape(self.mesh.n_elements, -1)
+        return _places(self.mesh.n_elements, self.mesh.order)[0]
 
     @property
     def n_dof(self):
@@ -58,6 +54,21 @@ class Film:
         np.add.at(m, self.dofs, self.areal_mass*np.tile(self.area, 2))
         m[0] += self.centre_mass
         return m[:-1]
+
+
+@lru_cache(maxsize=64)
+def _places(n_elements, order):
+    """Element by element: dofs of Film; places of blocks in the raveled matrix; places of r, z in (q, a, b, 0)."""
+    n = n_elements*order + 1
+    nodes = np.arange(n_elements)[:, None]*order + np.arange(order + 1)
+    place = np.arange(-1, 2*n - 1).reshape(n, 2)    # node j: r at 2j-1, z at 2j
+    place[0] = 2*n - 3, 0
+    place[-1] = 2*n - 3
+    dofs = place[nodes].transpose(0, 2, 1).reshape(n_elements, -1)
+    at_rest = place.copy()
+    at_rest[0, 0], at_rest[-1] = 2*n - 3, (2*n - 2, 2*n - 1)
+    blocks = dofs[:, :, None]*(2*n - 2) + dofs[:, None, :]
+    return dofs, blocks.ravel(), np.moveaxis(at_rest[nodes], 2, 0)
 
 
 def from_fields(f, e, c, mesh):
@@ -106,10 +117,11 @@ class Strain:
 
 def strain(film, q):
     """Strain of a state q (n_dof,)."""
-    radial, axial = expand(film, q, at_rest=True)
-    dr, dz = film.mesh.derivative(radial), film.mesh.derivative(axial)
-    r = film.mesh.local(radial)
-    return Strain(r, dr, dz, dr**2 + dz**2, (r/film.mesh.local_radius)**2)
+    mesh = film.mesh
+    where = _places(mesh.n_elements, mesh.order)[2]
+    local = np.concatenate([q, [mesh.edges[0], mesh.edges[-1], 0.0]])[where]
+    dr, dz = local @ reference_derivative(mesh.order).T/mesh.half_length[:, None]
+    return Strain(local[0], dr, dz, dr**2 + dz**2, local[0]**2/mesh.local_square)
 
 
 def surface_energy(film, A, B, voltage, electrodes=True):
@@ -145,14 +157,14 @@ def strain_rows(film, e):
     rows[:, :p1, p1:] = 2*e.dz[..., None]*D
     i = np.arange(p1)
     rows[:, p1 + i, i] = 2*e.r/film.mesh.local_radius**2
-    return rows, D
+    return rows
 
 
 def assemble_matrix(film, blocks):
     """(n_dof, n_dof) from element blocks (n_elements, 2(order+1), 2(order+1))."""
     n = film.n_dof + 1
-    places = film.dofs[:, :, None]*n + film.dofs[:, None, :]
-    return np.bincount(places.ravel(), blocks.ravel(), n*n).reshape(n, n)[:-1, :-1]
+    places = _places(film.mesh.n_elements, film.mesh.order)[1]
+    return np.bincount(places, blocks.ravel(), n*n).reshape(n, n)[:-1, :-1]
 
 
 def assemble_vector(film, parts):
@@ -160,12 +172,24 @@ def assemble_vector(film, parts):
     return np.bincount(film.dofs.ravel(), parts.ravel(), film.n_dof + 1)[:-1]
 
 
-def _quadratic(film, rows, AA, AB, BB):
-    """Element blocks of AA dA^2 + 2 AB dA dB + BB dB^2, weighted by the caller."""
-    p1 = film.mesh.order + 1
-    a, b = rows[:, :p1], rows[:, p1:]
-    weighted = np.concatenate([AA[..., None]*a + AB[..., None]*b, AB[..., None]*a + BB[..., None]*b], axis=1)
-    return rows.transpose(0, 2, 1) @ weighted
+def _blocks(film, e, AA, AB, BB, A=0.0, B=0.0):
+    """Element blocks of AA dA^2 + 2 AB dA dB + BB dB^2 + A d2A + B d2B, quadrature weights in the factors."""
+    mesh, p1 = film.mesh, film.mesh.order + 1
+    D, half = reference_derivative(mesh.order), mesh.half_length[:, None]
+    p, s, beta = 2*e.dr/half, 2*e.dz/half, 2*e.r/mesh.local_square       # dA = p D dr + s D dz, dB = beta dr
+    straight = 2*A/half**2
+    bends = np.stack([AA*p**2 + straight, AA*p*s, AA*s**2 + straight]).reshape(-1, p1) @ derivative_products(mesh.order)
+    rr, rz, zz = bends.reshape(3, mesh.n_elements, p1, p1)
+    mixed = (AB*beta)[..., None]*D                      # row of B's point, slope of A
+    turned = p[..., None]*mixed
+    K = np.empty((mesh.n_elements, 2*p1, 2*p1))
+    K[:, :p1, :p1] = rr + turned + turned.transpose(0, 2, 1)
+    i = np.arange(p1)
+    K[:, i, i] += BB*beta**2 + 2*B/mesh.local_square
+    K[:, :p1, p1:] = rz + s[..., None]*mixed
+    K[:, p1:, :p1] = K[:, :p1, p1:].transpose(0, 2, 1)
+    K[:, p1:, p1:] = zz
+    return K
 
 
 def potential(film, q, voltage):
@@ -179,13 +203,19 @@ def residual(film, q, voltage):
     """dPi/dq (n_dof,) in N."""
     e = strain(film, q)
     _, wA, wB, *_ = surface_energy(film, e.A, e.B, voltage)
-    rows, _ = strain_rows(film, e)
-    return _residual(film, q, rows, wA, wB)
+    return _residual(film, q, e, film.area*wA, film.area*wB)
 
 
-def _residual(film, q, rows, wA, wB):
-    load = np.concatenate([film.area*wA, film.area*wB], axis=1)
-    g = assemble_vector(film, (load[:, None, :] @ rows)[:, 0])
+def _gradient(film, e, A, B):
+    """(n_dof,): A dA + B dB, quadrature weights in the factors."""
+    weight = 2*A/film.mesh.half_length[:, None]
+    slopes = np.stack([weight*e.dr, weight*e.dz]) @ reference_derivative(film.mesh.order)
+    slopes[0] += 2*B*e.r/film.mesh.local_square
+    return assemble_vector(film, np.concatenate(list(slopes), axis=1))
+
+
+def _residual(film, q, e, A, B):
+    g = _gradient(film, e, A, B)
     g[0] -= film.spring_rate*(film.spring_free_height - q[0])
     return g
 
@@ -193,46 +223,36 @@ def _residual(film, q, rows, wA, wB):
 def linearise(film, q, voltage):
     """(Pi, dPi/dq, d2Pi/dq2) of a state."""
     e = strain(film, q)
-    w, wA, wB, wAA, wAB, wBB = surface_energy(film, e.A, e.B, voltage)
-    rows, D = strain_rows(film, e)
-    K = _quadratic(film, rows, film.area*wAA, film.area*wAB, film.area*wBB)
-    p1 = film.mesh.order + 1
-    stretching = D.transpose(0, 2, 1) @ (2*(film.area*wA)[..., None]*D)    # w_A delta2 A
-    K[:, :p1, :p1] += stretching
-    K[:, p1:, p1:] += stretching
-    i = np.arange(p1)
-    K[:, i, i] += 2*film.area*wB/film.mesh.local_radius**2      # w_B delta2 B
-    tangent = assemble_matrix(film, K)
+    w, *derivatives = surface_energy(film, e.A, e.B, voltage)
+    A, B, AA, AB, BB = (film.area*part for part in derivatives)
+    tangent = assemble_matrix(film, _blocks(film, e, AA, AB, BB, A, B))
     tangent[0, 0] += film.spring_rate
     spring = film.spring_rate*(film.spring_free_height - q[0])**2/2
-    return np.sum(film.area*w) + spring, _residual(film, q, rows, wA, wB), tangent
+    return np.sum(film.area*w) + spring, _residual(film, q, e, A, B), tangent
 
 
 def electrode_load(film, q, voltage):
     """f = -d2Pi/dq dV (n_dof,) in N/V."""
     e = strain(film, q)
-    rows, _ = strain_rows(film, e)
     c = film.areal_capacitance*voltage*film.area
-    return assemble_vector(film, (np.concatenate([c*e.B, c*e.A], axis=1)[:, None, :] @ rows)[:, 0])
+    return _gradient(film, e, c*e.B, c*e.A)
 
 
 def dissipation(film, q):
     """D0 (n_dof, n_dof): q^T D0 q = integral of 2h(d1^2 + d2^2 + (d1 + d2)^2) dA0, d = delta lam/lam."""
     e = strain(film, q)
-    rows, _ = strain_rows(film, e)
     c = film.area*film.thickness
     # d1 = dA/2A, d2 = dB/2B; 2(d1^2 + d2^2 + (d1 + d2)^2) = 4(d1^2 + d1 d2 + d2^2)
-    return assemble_matrix(film, _quadratic(film, rows, c/e.A**2, c/(2*e.A*e.B), c/e.B**2))
+    return assemble_matrix(film, _blocks(film, e, c/e.A**2, c/(2*e.A*e.B), c/e.B**2))
 
 
 def swept_volume(film, q):
     """S = -integral of pi r^2 z' dr0 in m3, the centre's part included, and s = dS/dq (n_dof,) in m2."""
     e = strain(film, q)
-    D = film.mesh.derivative_matrix
     w = film.mesh.weight
     radial = -2*np.pi*w*e.r*e.dz
-    axial = -(np.pi*w*e.r**2)[:, None, :] @ D
-    s = assemble_vector(film, np.concatenate([radial, axial[:, 0]], axis=1))
+    axial = -(np.pi*w*e.r**2/film.mesh.half_length[:, None]) @ reference_derivative(film.mesh.order)
+    s = assemble_vector(film, np.concatenate([radial, axial], axis=1))
     return -np.sum(np.pi*w*e.r**2*e.dz), s
 
 

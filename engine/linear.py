@@ -17,6 +17,7 @@ MODES_TO = 1.5              # the basis holds the modes up to this multiple of t
 POLYNOMIALS_TO = 1.3        # the air's polynomials are counted at this multiple of it
 MOST_ELEMENTS = 26
 MOST_POLYNOMIALS = 192
+LISTENER_POINTS = 12        # Gauss points an element for the sound at the listener: 1e-13 of it
 
 
 @dataclass(frozen=True)
@@ -31,7 +32,7 @@ class System:
     dissipation: np.ndarray      # D0 (n_dof, n_dof)
     circuit: circuit.Circuit     # electrodes and source; its loads are f (n_line, n_dof) N/V at the bias
     volume: np.ndarray           # s (n_dof,) m2
-    source: source.Source
+    source: source.Source        # what the listener hears
     projector: np.ndarray        # (n_polynomials, n_dof): Zernike coefficients of the normal velocity
     air: air.Air
     rear: rear.Rear
@@ -84,7 +85,7 @@ def build(design, frequency_max, refinement=1.0):
         dissipation=flm.dissipation(fine, q), volume=s,
         circuit=circuit.build(fine, q, rest.bias, design.electrodes, design.drive, f.layers,
                               (LOWEST_FREQUENCY, frequency_max)),
-        source=emitter,
+        source=source.sample(fine, q, LISTENER_POINTS),
         projector=source.flow_projection(emitter, functionals), air=gas, rear=behind, air_load=design.air.load,
         film_losses=(f.shear_modulus, f.loss_factor, f.viscosity, f.relaxation),
         spring_loss=design.centre.spring_loss_factor*design.centre.spring_rate, frame_radius=b, frequency_max=frequency_max,

@@ -28,8 +28,8 @@ def _chain(invariant, f, f1, f2):
 
 
 def _neo_hookean(A, B, P, mu, parameters):
-    I1 = first_invariant(A, B, P)
-    return _chain(I1, mu/2*(I1[0] - 3), mu/2, 0.0)
+    I1, *derivatives = first_invariant(A, B, P)
+    return mu/2*(I1 - 3), *(mu/2*part for part in derivatives)
 
 
 def _mooney_rivlin(A, B, P, mu, parameters):

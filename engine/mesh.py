@@ -38,6 +38,13 @@ def reference_derivative(order):
     return D - np.diag(D.sum(axis=1))
 
 
+@lru_cache
+def derivative_products(order):
+    """(order+1, (order+1)^2): D_ki D_kj of the reference derivative, so that weights @ it are D^T diag(weights) D."""
+    D = reference_derivative(order)
+    return (D[:, :, None]*D[:, None, :]).reshape(order + 1, -1)
+
+
 def lagrange(order, points):
     """Values (n_points, order+1) of the element's Lagrange polynomials at points in [-1, 1]."""
     x, _, w = gauss_lobatto(order)
@@ -91,6 +98,11 @@ class Mesh:
     def derivative_matrix(self):
         """(n_elements, order+1, order+1) 1/m: from an element's nodal values to their slopes."""
         return reference_derivative(self.order)/self.half_length[:, None, None]
+
+    @cached_property
+    def local_square(self):
+        """(n_elements, order+1) m2: the square of local_radius."""
+        return self.local_radius**2
 
     @property
     def n_nodes(self):

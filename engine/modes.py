@@ -6,7 +6,7 @@ import numpy as np
 import scipy.linalg
 
 from engine import film as flm
-from engine import linear, material, radiation
+from engine import linear, material, radiation, source
 from engine.errors import InvalidDesign, NoRestState
 from engine.statics import frozen
 
@@ -61,6 +61,7 @@ class Basis:
     tables: radiation.Tables
     projected: np.ndarray            # (2, K, n, n): resistance, reactance, see radiation.project_tables
     refined: np.ndarray | None = None    # (n_modes,) Hz: the frequency with the air's mass at that frequency
+    flow: np.ndarray | None = None       # (n_points, n) m2: volume flow of each vector through the points of the source
 
 
 def solve(system, least_modes=1):
@@ -74,34 +75,35 @@ def solve(system, least_modes=1):
     top = (2*np.pi*linear.MODES_TO*system.frequency_max)**2
     squares, shapes = scipy.linalg.eigh(K, M, check_finite=False)       # all of them: faster than a choice
     n_modes = min(max(np.searchsorted(squares, top), least_modes), MOST_MODES)
-    squares, shapes = squares[:n_modes], shapes[:, :n_modes].T
     if squares[0] <= 0:
         raise NoRestState("The rest shape is not stable against small motions: raise the prestretch or lower the bias.",
                           "slack")
-    static = _static_corrections(K, M, np.concatenate([system.circuit.loads, system.volume[None]]), shapes)
+    static = _static_corrections(squares, shapes, np.concatenate([system.circuit.loads, system.volume[None]]), n_modes)
+    squares, shapes = squares[:n_modes], np.ascontiguousarray(shapes[:, :n_modes].T)
     modes, scale = _describe(system, squares, shapes)
     every = np.concatenate([shapes*scale[:, None], static])
     x_max = 2*np.pi*linear.MODES_TO*system.frequency_max/system.air.sound_speed*system.frame_radius
     tables = radiation.tables(x_max, len(system.projector))
     projected = radiation.project_tables(system.projector @ every.T, tables)
-    basis = Basis(modes, every, tables, projected)
+    basis = Basis(modes, every, tables, projected, flow=source.flow(system.source, every).T.copy())
     return _with_damping(system, basis)
 
 
-def _static_corrections(K, M, loads, shapes):
-    """K^-1 loads, less their part along the modes, orthonormal in M; what is left of nothing is left out."""
-    vectors = scipy.linalg.solve(K, loads.T, assume_a="pos", check_finite=False).T
+def _static_corrections(squares, shapes, loads, n_modes):
+    """K^-1 loads, less their part along the first n_modes, orthonormal in M; what is left of nothing is left out.
+
+    All eigenvectors are at hand, orthonormal in M: K^-1 = sum phi phi^T/omega^2, and M is the unit matrix among them.
+    """
     kept = []
-    for v in vectors:
-        size = np.sqrt(v @ M @ v)
+    for answer in (loads @ shapes)/squares:
+        size, v = np.linalg.norm(answer), answer[n_modes:]
         for _ in range(2):
-            v = v - ((v @ M) @ shapes.T) @ shapes
             for other in kept:
-                v = v - (v @ M @ other)*other
-        left = np.sqrt(max(v @ M @ v, 0.0))
+                v = v - (v @ other)*other
+        left = np.linalg.norm(v)
         if left > 1e-9*size > 0:
             kept.append(v/left)
-    return np.array(kept).reshape(len(kept), len(K))
+    return np.array(kept).reshape(len(kept), len(squares) - n_modes) @ shapes[:, n_modes:].T
 
 
 def _describe(system, squares, shapes):
@@ -164,7 +166,7 @@ def _with_damping(system, basis):
     """
     m, n = basis.modes, len(basis.modes.frequency)
     shapes = basis.shapes[:n]
-    resistance, reactance = (np.diagonal(t[:, :n, :n], axis1=1, axis2=2).T for t in basis.projected)
+    resistance, reactance = np.einsum("pkii->pik", basis.projected[:, :, :n, :n]).copy()
     faces = system.rear.faces*system.air_load
     heavy = faces*2*np.pi*system.air.density*system.frame_radius**3
     square0 = (2*np.pi*m.frequency)**2

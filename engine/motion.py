@@ -5,9 +5,11 @@ from dataclasses import dataclass
 import numpy as np
 
 from engine import linear, radiation
-from engine.bands import Level, solve_band
+from engine.bands import Level, dynamic_stiffness, solve_band
 from engine.modes import Basis
 from engine.statics import frozen
+
+__all__ = ["Motion", "Reduced", "dynamic_stiffness", "frequency_grid", "reduce", "solve_motion"]
 
 GRID_POINTS = 240               # of the even log grid, before refinement at resonances
 FEW_MODES = 14                  # below so many unknowns another octave costs more than it saves
@@ -48,7 +50,7 @@ def solve_motion(system, basis, frequency):
     every mode keeps its contribution at every frequency. Source: DEVELOPERS.md, "Response".
     """
     reduced = reduce(system, basis)
-    level = _whole(system, basis, reduced, frequency[-1])
+    level = _whole(basis, reduced)
     parts = []
     stop = len(frequency)
     while stop > 0:
@@ -62,8 +64,16 @@ def solve_motion(system, basis, frequency):
                 [q[:, :n_low], q[:, n_low:] @ level.columns.T], axis=1)
             parts.append((unit, *rest))
         stop = start
-    return Motion(system, basis, frozen(np.array(frequency)),
-                  *(frozen(np.concatenate(part[::-1])) for part in zip(*parts, strict=True)))
+    unit, line, charge = (frozen(np.concatenate(part[::-1])) for part in zip(*parts, strict=True))
+    return Motion(system, basis, frozen(np.array(frequency)), unit, frozen(_power(system, basis, frequency, unit)), line,
+                  charge)
+
+
+def _power(system, basis, frequency, unit):
+    """(n_freq,) W/V2 radiated to one side: pi rho b^4/c omega^4 int_0^1 |Phi(k b sqrt(1-u^2))|^2 du, Phi the far field."""
+    b, c, omega = system.frame_radius, system.air.sound_speed, 2*np.pi*frequency
+    coefficients = system.projector @ basis.shapes.T
+    return np.pi*system.air.density*b**4/c*omega**4*radiation.squared_far_field(coefficients, omega*b/c, unit)
 
 
 def _split(frequency, start, stop, n):
@@ -73,12 +83,10 @@ def _split(frequency, start, stop, n):
     return [(middle, stop), (start, middle)] if many and middle > start else [(start, stop)]
 
 
-def _whole(system, basis, reduced, top):
+def _whole(basis, reduced):
     """Level of the whole basis."""
-    x = 2*np.pi*top*system.frame_radius/system.air.sound_speed
-    far = radiation.far_field_series(system.projector @ basis.shapes.T, x)
     n_modes = len(basis.modes.frequency)
-    return Level(reduced.real, reduced.constant_loss, reduced.loads, basis.projected, far,
+    return Level(reduced.real, reduced.constant_loss, reduced.loads, basis.projected,
                  basis.modes.frequency, np.eye(len(basis.shapes) - n_modes))
 
 
@@ -91,8 +99,8 @@ def _lower(level, reduced, n_low):
     # the static answers lie in what the level above spans: its modes above n_low, its own columns
     into = np.concatenate([columns[:n_before - n_low], level.columns.T @ columns[n_before - n_low:]])
     real, loss, air = (_project(X, n_low, into) for X in (level.real, level.constant_loss, level.air))
-    loads, series = (np.concatenate([X[:, :n_low], X[:, n_low:] @ into], axis=1) for X in (level.loads, level.far[1]))
-    return Level(real, loss, loads, air, (level.far[0], series), level.frequency[:n_low], columns)
+    loads = np.concatenate([level.loads[:, :n_low], level.loads[:, n_low:] @ into], axis=1)
+    return Level(real, loss, loads, air, level.frequency[:n_low], columns)
 
 
 @dataclass(frozen=True)

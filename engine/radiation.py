@@ -32,7 +32,7 @@ from engine.radiation_tables import (
 __all__ = ["Tables", "azimuth", "depth_estimate_limit", "disk", "disk_points", "far_field", "far_field_series",
            "gauss_legendre", "impedance", "impedance_tables", "interpolation", "listener_transfer", "low_frequency_mass",
            "n_polynomials", "points_per_segment", "prepare", "project", "project_tables", "projection_matrix",
-           "radiation_rule", "static_mass_matrix", "tables"]
+           "squared_far_field", "static_mass_matrix", "tables"]
 
 NEAREST = 1e-3            # of the source's size: closer than this the listener is on the surface
 DEPTH_LIMIT = ((0.1, 12.0), (0.2, 1.0), (0.3, 0.75), (0.4, 0.643))     # height/b, k b; see depth_estimate_limit
@@ -193,14 +193,25 @@ def far_field_series(coefficients, s_max, order=0):
     return top, table[:, :J] @ coefficients
 
 
-def radiation_rule(x):
-    """Nodes sqrt(1-u^2) and weights (n,) on 0 < u < 1 for int |Phi(x sqrt(1-u^2))|^2 du, k b up to x.
+def squared_far_field(coefficients, x, amplitude):
+    """int_0^1 |Phi(x sqrt(1-u^2))|^2 du of moving shapes, n = 0: the resistance A(x) between them, by far-field angles.
 
-    The integrand is even in u and of exponential type 2 x: the positive half of a Gauss-Legendre rule, to some 1e-13.
+    The integrand is even in u and of exponential type 2 x: half a Gauss-Legendre rule carries it to some 1e-13.
+
+    Parameters: coefficients (J, m); x = k b (n_freq,); amplitude (n_freq, m) complex.
+    Returns: (n_freq,). Times pi rho b^4/c omega^4 it is the power to one side of displacements of that amplitude.
     """
-    u, weight = gauss_legendre(2 * int(np.ceil(0.5 * (x + 6.5 * np.cbrt(x) + 8.0))))
-    half = u > 0.0
-    return np.sqrt(1.0 - u[half] ** 2), weight[half]
+    largest = x.max(initial=0.0)
+    top, series = far_field_series(coefficients, largest)
+    u, weight = gauss_legendre(2 * int(np.ceil(0.5 * (largest + 6.5 * np.cbrt(largest) + 8.0))))
+    u, weight = u[u > 0.0], weight[u > 0.0]
+    t = 2.0 * np.square(x[:, None] / top) * (1.0 - u * u) - 1.0
+    a = np.ascontiguousarray((series @ amplitude.T)[..., None])         # (K, n_freq, 1)
+    here = before = np.zeros(t.shape, complex)
+    for ak in a[:0:-1]:                                                  # Clenshaw's sum of a Chebyshev series
+        here, before = ak + 2.0 * t * here - before, here
+    field = a[0] + t * here - before
+    return (np.square(field.real) + np.square(field.imag)) @ weight
 
 
 @lru_cache

@@ -7,7 +7,6 @@ import numpy as np
 
 from engine import film as flm
 from engine import linear, radiation, statics
-from engine import source as src
 from engine.design import Listener
 from engine.errors import InvalidDesign
 from engine.modes import MOST_MODES, Modes
@@ -225,8 +224,7 @@ def _transfer(motion, distance, angle):
 
 def transfer(system, basis, frequency, distance, angle):
     """(n_freq, n_basis) Pa/m: pressure at a point per unit of each basis vector, the air's absorption included."""
-    flow = src.flow(system.source, basis.shapes)
-    T = radiation.listener_transfer(system.source.radius, system.source.height, flow.T,
+    T = radiation.listener_transfer(system.source.radius, system.source.height, basis.flow,
                                     2*np.pi*frequency/system.air.sound_speed, distance, angle,
                                     system.air.density, system.air.sound_speed)
     return T*10**(-system.air.absorption(frequency)*distance/20)[:, None]

@@ -57,11 +57,13 @@ def flow_projection(source, functionals):
     n_centre = len(source.centre_flow)
     on_film = functionals[:, n_centre:].reshape(len(functionals), *source.radial_factor.shape)
     E, _ = source.interpolation
-    p1 = source.film.mesh.order + 1
-    out = np.zeros((len(functionals), source.film.n_dof + 1))
-    parts = np.concatenate([(on_film*source.axial_factor) @ E, (on_film*source.radial_factor) @ E], axis=-1)
-    dofs = source.film.dofs
-    for local in range(2*p1):      # an element's places are distinct, neighbours share only edges
-        np.add.at(out, (slice(None), dofs[:, local]), parts[:, :, local])
-    out[:, 0] += functionals[:, :n_centre] @ source.centre_flow
-    return out[:, :-1]
+    mesh = source.film.mesh
+    out = np.empty((len(functionals), source.film.n_dof))
+    for start, factor in ((1, source.axial_factor), (2, source.radial_factor)):
+        parts = (on_film*factor) @ E
+        nodal = np.zeros((len(functionals), mesh.n_nodes))
+        nodal[:, :-1] = parts[..., :-1].reshape(len(functionals), -1)
+        nodal[:, mesh.order::mesh.order] += parts[..., -1]         # neighbours share their edge
+        out[:, start::2] = nodal[:, 1:-1]
+    out[:, 0] = nodal[:, 0] + functionals[:, :n_centre] @ source.centre_flow
+    return out
