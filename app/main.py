@@ -9,6 +9,7 @@ from panel.reactive import Syncable
 from panel.util import edit_readonly
 
 from app import theme
+from app.pages.distortion import DistortionPage
 from app.pages.header import Header, tell
 from app.pages.limits import LimitsPage
 from app.pages.response import ResponsePage
@@ -53,10 +54,11 @@ def page(design):
     header = Header(session, PRODUCT)
     response = ResponsePage(session, dark=pn.config.theme == "dark")
     LimitsPage(session, response)
+    distortion = DistortionPage(session, response)
     frame = pmui.Page(header=[header], main=[response.view], theme_config=colours(), sx=FRAME, busy_indicator=None,
                       title="", meta_title=PRODUCT, favicon=ICON, raw_css=[LOADER_CSS], sizing_mode="stretch_both")
     ignore_busy(frame)
-    frame.param.watch(lambda event: response.set_dark(event.new), "dark_theme")
+    frame.param.watch(lambda event: (response.set_dark(event.new), distortion.set_dark()), "dark_theme")
     session.start()
     pn.state.onload(session.connected)
     pn.state.onload(response.controls.go_live)

@@ -13,7 +13,7 @@ PATIENCE = 0.5      # s the next result waits for a browser that does not say it
 
 __all__ = ["PAGES", "Problem", "Session", "samples", "visit"]
 
-PAGES = ("response", "limits")
+PAGES = ("response", "limits", "distortion")
 
 
 @dataclass(frozen=True)
@@ -52,7 +52,7 @@ class Session(param.Parameterized):
         self._document = document
         self._connected = document is None
         self._waiting = {}           # what to publish once the browser is there
-        self._closed = False
+        self._closed, self._endings = False, []
         updater = updater or _shared_updater
         self._painted = asyncio.Event()
         self._painted.set()
@@ -77,7 +77,7 @@ class Session(param.Parameterized):
         """
         self._connected = True
         for take, outcome in self._waiting.items():
-            self._in_document(take, outcome)
+            self.in_document(take, outcome)
         self._waiting = {}
 
     def painted(self):
@@ -99,10 +99,16 @@ class Session(param.Parameterized):
     def close(self):
         """End with the visitor: nothing is computed or published for this session any more."""
         self._closed = True
+        for ending in self._endings:
+            ending()
         for watch in self._watches:
             self.state.param.unwatch(watch)
         for updater in (self._shown, self._grey, self._walls, self._grey_walls):
             updater.close()
+
+    def on_close(self, ending):
+        """Call ``ending`` (no arguments) when the session ends."""
+        self._endings.append(ending)
 
     def _ask(self, *events):
         """Want the newest design; one that is invalid is a problem at once and leaves the plots."""
@@ -145,21 +151,21 @@ class Session(param.Parameterized):
 
     def _publish(self, outcome):
         """Take a result or a failure to the document."""
-        self._in_document(self._take, outcome)
+        self.in_document(self._take, outcome)
 
     def _publish_held(self, outcome):
         """Take the held design's result to the document."""
-        self._in_document(self._take_held, outcome)
+        self.in_document(self._take_held, outcome)
 
     def _publish_limits(self, outcome):
         """Take the limits to the document."""
-        self._in_document(self._take_limits, outcome)
+        self.in_document(self._take_limits, outcome)
 
     def _publish_held_limits(self, outcome):
         """Take the held design's limits to the document."""
-        self._in_document(self._take_held_limits, outcome)
+        self.in_document(self._take_held_limits, outcome)
 
-    def _in_document(self, take, outcome):
+    def in_document(self, take, outcome):
         """Publish under the document's lock, or at once without a document; wait for a browser that is not there yet."""
         if self._closed:
             return

@@ -61,6 +61,13 @@ def diverging(colours):
     return [_hex(rgb) for rgb in _from_oklab(lab)]
 
 
+def sequential(first, last, steps):
+    """Colours (list of "#rrggbb") on the straight line from one to another in OKLab."""
+    a, b = _oklab(_linear_rgb(first)), _oklab(_linear_rgb(last))
+    t = np.linspace(0, 1, steps)[:, None]
+    return [_hex(rgb) for rgb in _from_oklab(a + (b - a) * t)]
+
+
 _TO_LMS = np.array([[0.4122214708, 0.5363325363, 0.0514459929],
                     [0.2119034982, 0.6806995451, 0.1073969566],
                     [0.0883024619, 0.2817188376, 0.6299787005]])

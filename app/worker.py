@@ -52,6 +52,9 @@ class Worker:
         self.long = ThreadPoolExecutor(N_LONG, thread_name_prefix="long")
         self.overview = functools.lru_cache(maxsize=REMEMBERED)(_overview)
         self.limits = functools.lru_cache(maxsize=REMEMBERED)(self._limits)
+        self.distortion = functools.lru_cache(maxsize=REMEMBERED)(_distortion)
+        self.series = functools.lru_cache(maxsize=REMEMBERED)(_series)
+        self.thd_map = _thd_map
 
     def _limits(self, design, band, judgement):
         """`engine.limits_view` of an overview, which is computed or remembered."""
@@ -230,3 +233,18 @@ def shared():
 def _overview(design, band):
     """`engine.overview`, looked up when called."""
     return engine.overview(design, band)
+
+
+def _distortion(design, band, count):
+    """`engine.distortion_view`, looked up when called."""
+    return engine.distortion_view(design, band, count)
+
+
+def _series(design, frequency):
+    """`engine.amplitude_series`, looked up when called."""
+    return engine.amplitude_series(design, frequency)
+
+
+def _thd_map(design, band, progress, stop):
+    """`engine.distortion_map`, looked up when called."""
+    return engine.distortion_map(design, band, progress=progress, stop=stop)

@@ -32,6 +32,7 @@ class AmplitudeSeries:
     amplitude: dict                  # law -> (n,) V
     thd: dict                        # law -> (n,) part of the total
     faults: dict                     # law -> why it ends where it ends, or nothing
+    found: dict                      # law -> Distortion at the design's own amplitude, one frequency
 
 
 @dataclass(frozen=True)
@@ -66,8 +67,12 @@ def amplitude_series(design, frequency, count=9):
 
     Raises: NoRestState, NotConverged.
     """
-    amplitude, thd, faults = {}, {}, {}
+    amplitude, thd, faults, found = {}, {}, {}, {}
     for law in LAWS:
+        try:
+            found[law] = distortion(_driven(design, law), [frequency], n_harmonics=HARMONICS)
+        except InvalidDesign:
+            pass                          # the series ends before the design's amplitude, and says why
         steps, faults[law] = _amplitudes(design, law, count)
         points = []
         for v in steps:
@@ -82,7 +87,7 @@ def amplitude_series(design, frequency, count=9):
             points.append((v, one.thd[0]))
         table = np.array(points).reshape(-1, 2)
         amplitude[law], thd[law] = frozen(table[:, 0].copy()), frozen(table[:, 1].copy())
-    return AmplitudeSeries(float(frequency), amplitude, thd, faults)
+    return AmplitudeSeries(float(frequency), amplitude, thd, faults, found)
 
 
 def distortion_map(design, band, n_freq=40, n_amplitudes=12, progress=None, stop=None):

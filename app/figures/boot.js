@@ -147,7 +147,7 @@ const reread = (page) => {
 }
 
 // What other pages' scripts share with this one.
-const TOOLS = { viewOf, pointed, toNearest, stepCursor, bracket, put, digits, hertz, setHtml, restCopies, textWidth, NUMBERS }
+const TOOLS = { ACTIONS, ask, onScreen, percent, viewOf, pointed, toNearest, stepCursor, bracket, put, digits, hertz, setHtml, restCopies, textWidth, NUMBERS }
 
 const SENT = ["level", "rows", "motion", "shapes", "nodes", "gallery", "moving", "still"]
 const boot = (m) => {

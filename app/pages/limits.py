@@ -27,7 +27,7 @@ class LimitsPage:
             self._build()
         with self._response.board.in_one():
             for part in self._response.own:
-                part.visible = not here
+                part.visible = self.session.page == "response"
             for part in (self.board.window, self.board.electrical, self.board.verdict) if self.board else ():
                 part.visible = here
         self._response.controls.judge(here)

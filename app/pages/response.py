@@ -50,9 +50,10 @@ class ResponsePage:
                              tags=[self.controls.answers], stylesheets=[PLOTS_CSS], sizing_mode="stretch_both")
         return pn.pane.Bokeh(self._whole, css_classes=["region-plots"], margin=0, sizing_mode="stretch_both")
 
-    def add(self, part):
-        """Give another page's part, a Bokeh layout, a place below the strip."""
-        part.stylesheets = [PART_CSS]
+    def add(self, part, styled=False):
+        """Give another page's part, a Bokeh layout, a place below the strip; it stacks what it holds unless ``styled``."""
+        if not styled:
+            part.stylesheets = [PART_CSS]
         self._whole.children = [*self._whole.children, part]
 
     def show(self, *events):
