@@ -46,6 +46,9 @@ APP = {
     "values": {"engine"},
     "theme": set(),
     "wire": set(),
+    "clips": {"wav"},
+    "wav": set(),
+    "loudness": set(),
 }
 ENGINE_FREE_OF = {"param", "panel", "bokeh", "panel_material_ui", "matplotlib", "app"}
 
