@@ -8,16 +8,23 @@ function make(tag, properties = {}, ...children) {
 // The way to the server and back, one for the page. Moves go out together, the newest of each control, as soon as the
 // ones before were answered; an answer says what groups of controls show.
 const PATIENCE = 1000       // ms an answer is waited for
+const EVERY = 40            // ms between two messages: more than anyone can see, and the server has others to serve
 function theLine() {
   const document = window.Bokeh.documents[0]
   const asked = document.get_model_by_name("asked"), answers = document.get_model_by_name("answers")
   if (!asked || !answers) return null
   if (answers.line) return answers.line
-  const line = answers.line = {pending: new Map(), out: null, count: 0, groups: new Map(), latest: {}}
+  const line = answers.line = {pending: new Map(), out: null, last: 0, count: 0, groups: new Map(), latest: {}}
   const go = () => {
     clearTimeout(line.out)
     line.out = null
     if (line.pending.size === 0) return
+    const early = line.last + EVERY - performance.now()
+    if (early > 0) {
+      line.out = setTimeout(go, early)
+      return
+    }
+    line.last = performance.now()
     const moves = [...line.pending.values()]
     line.pending.clear()
     line.out = setTimeout(go, PATIENCE)

@@ -148,13 +148,13 @@ class Shared:
 
     def curves(self, publish):
         """Updater for DistortionViews of the design under way."""
-        return worker.Updater(worker.shared().distortion, publish, worker.shared().executor)
+        return worker.Updater(worker.shared().distortion, publish, worker.shared().side)
 
     held = curves
 
     def series(self, publish):
         """Updater for AmplitudeSeries."""
-        return worker.Updater(worker.shared().series, publish, worker.shared().executor)
+        return worker.Updater(worker.shared().series, publish, worker.shared().side)
 
     def job(self, tell):
         """Job for the map."""

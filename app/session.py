@@ -210,7 +210,7 @@ class Session(param.Parameterized):
 def _shared_limits(publish):
     """Access to the process's worker for the limits."""
     shared = worker.shared()
-    return worker.Updater(shared.limits, publish, shared.executor)
+    return worker.Updater(shared.limits, publish, shared.side)
 
 
 def _shared_updater(publish, ready=None):

@@ -14,7 +14,7 @@ from threadpoolctl import threadpool_limits
 import engine
 from engine.errors import InvalidDesign, NoRestState, NotConverged, Stopped
 
-N_THREADS = 2            # one visitor dragging must not make another wait for a whole computation
+N_THREADS = 1            # for overviews: two at a time are each slower than one after the other
 SWITCH_INTERVAL = 1e-3   # s a computing thread may keep the interpreter while the event loop waits for it
 REMEMBERED = 24          # overviews kept for the whole process: undo, redo and a sample's first sight cost nothing
 N_LONG = 1               # long computations at a time; the others wait
@@ -49,6 +49,7 @@ class Worker:
         pin_blas()
         sys.setswitchinterval(SWITCH_INTERVAL)
         self.executor = ThreadPoolExecutor(n_threads, thread_name_prefix="compute")
+        self.side = ThreadPoolExecutor(1, thread_name_prefix="side")      # what other pages ask beside the overviews
         self.long = ThreadPoolExecutor(N_LONG, thread_name_prefix="long")
         self.overview = functools.lru_cache(maxsize=REMEMBERED)(_overview)
         self.limits = functools.lru_cache(maxsize=REMEMBERED)(self._limits)

@@ -62,8 +62,6 @@ HELPERS = """() => {
       source.properties.data.change.disconnect(heard)
       return {lag: seen - last, repaints}
     },
-    drag(key) { let i = 0; window.dragging = setInterval(() => move(slider(key), (i += 1) % 40 < 20 ? 1 : -1), 1000 / 60) },
-    stop() { clearInterval(window.dragging) },
   }
 }"""
 READY = ("window.Bokeh && Bokeh.documents.length > 0 && Bokeh.documents[0].get_model_by_name('level') "
@@ -128,14 +126,13 @@ def main():
         print(f"burst on Limits: {burst['repaints']} repaints, lag {burst['lag']:.0f} ms")
         page.locator("button.tab", has_text="Response").click()
         page.evaluate("bench.listen('level')")
-        other = opened(browser, url)
-        other.evaluate(HELPERS)
-        other.evaluate("() => { window.requestAnimationFrame = () => 0 }")   # its painting would be another machine's
         beside = steps(page, "film-shear_modulus")
-        other.evaluate("() => bench.drag('geometry-frame_radius')")
+        other = subprocess.Popen([sys.executable, str(Path(__file__).parent / "visitor.py"), url], stdin=subprocess.PIPE,
+                                 stdout=subprocess.PIPE, text=True)
+        page.wait_for_timeout(3000)
         busy = steps(page, "film-density")
-        other.evaluate("() => bench.stop()")
-        print(f"a second visitor still, ms: {percentiles(beside)}; dragging: {percentiles(busy)}; "
+        said, _ = other.communicate()
+        print(f"alone, ms: {percentiles(beside)}; while a second visitor drags ({said.strip()}): {percentiles(busy)}; "
               f"ratio of p50 {np.median(busy) / np.median(beside):.2f}")
         process.send_signal(signal.SIGINT)
         process.wait(30)
