@@ -9,9 +9,8 @@ from engine.bands import Level, dynamic_stiffness, solve_band
 from engine.modes import Basis
 from engine.statics import frozen
 
-__all__ = ["Motion", "Reduced", "dynamic_stiffness", "frequency_grid", "reduce", "solve_motion"]
+__all__ = ["Motion", "Reduced", "dynamic_stiffness", "reduce", "solve_motion"]
 
-GRID_POINTS = 240               # of the even log grid, before refinement at resonances
 FEW_MODES = 14                  # below so many unknowns another octave costs more than it saves
 MANY = 40                       # from so many unknowns on, and so many times frequencies, an octave makes two bands
 MANY_SOLVED = 4000
@@ -30,26 +29,13 @@ class Motion:
     charge: np.ndarray         # (n_freq,) F: charge that has entered per volt of source
 
 
-def frequency_grid(basis, low, high, n_points=GRID_POINTS):
-    """(n_freq,) Hz: an even log grid and, at every resonance narrower than it, points across the peak."""
-    even = np.geomspace(low, high, n_points)
-    f, zeta = basis.refined, basis.modes.damping_ratio
-    narrow = (f > low) & (f < high) & (zeta < 2.5*np.log(high/low)/n_points)
-    offsets = np.array([-1.8, -0.8, -0.35, 0.0, 0.35, 0.8, 1.8])
-    extra = (f[narrow, None]*(1 + zeta[narrow, None]*offsets)).ravel()
-    every = np.unique(np.concatenate([even, extra[(extra > low) & (extra < high)]]))
-    keep = np.append(True, np.diff(np.log(every)) > 1e-6)
-    keep[-1] = True
-    return every[keep]
-
-
-def solve_motion(system, basis, frequency):
-    """Motion at the given ascending frequencies, octave by octave from the top, in bands.
+def solve_motion(system, basis, frequency, reduced=None):
+    """Motion at the given ascending frequencies, octave by octave from the top, in bands; reduced: reduce(...) if known.
 
     An octave's unknowns are the modes up to twice its upper end and the static answer of everything above them, so
     every mode keeps its contribution at every frequency. Source: DEVELOPERS.md, "Response".
     """
-    reduced = reduce(system, basis)
+    reduced = reduced or reduce(system, basis)
     level = _whole(basis, reduced)
     parts = []
     stop = len(frequency)

@@ -11,7 +11,8 @@ from engine.design import Listener
 from engine.errors import InvalidDesign
 from engine.modes import MOST_MODES, Modes
 from engine.modes import solve as solve_modes
-from engine.motion import Motion, frequency_grid, solve_motion
+from engine.motion import Motion, reduce, solve_motion
+from engine.resonances import frequency_grid
 from engine.statics import Equilibrium, Finding, frozen
 
 REFERENCE_PRESSURE = 20e-6      # Pa, ISO 1683
@@ -201,7 +202,9 @@ def basis_for(design, frequency_max):
 def _motion(design, asked):
     given = np.frombuffer(asked) if isinstance(asked, bytes) else None
     system, basis = _system_and_basis(design, asked[1] if given is None else float(given[-1]))
-    return solve_motion(system, basis, frequency_grid(basis, *asked) if given is None else given)
+    reduced = reduce(system, basis)
+    frequency = frequency_grid(system, basis, reduced, *asked) if given is None else given
+    return solve_motion(system, basis, frequency, reduced)
 
 
 def _check_listener(system, listener):

@@ -23,7 +23,7 @@ film
 branch statics
 radiation_tables radiation
 rear
-circuit source linear modes bands motion
+circuit source linear modes bands motion resonances
 response window
 cycle inverses harmonic balance distortion
 distortion_view

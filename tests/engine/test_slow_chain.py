@@ -21,12 +21,12 @@ from tests.references.slow_chain import VACUUM_PERMITTIVITY, Chain, King, Plan
 SAMPLES = Path(__file__).parents[2] / "sample_designs"
 TOLERANCE = 0.05       # dB
 
-# Ten of the highest peaks of each sample, Hz: maxima of the slow chain's level, searched to 1e-6 about the maxima on a
-# grid of some 400 frequencies.
+# Ten or eleven of the highest peaks of each sample, Hz: maxima of the slow chain's level, searched to 1e-6 about the
+# maxima on a grid of some 400 frequencies and about the engine's own.
 PEAKS = {
-    "fern-label": (1618.78, 2449.44, 1201.39, 4940.83, 3279.53, 560.77, 4526.78, 2031.13, 3695.57, 2864.78),
+    "fern-label": (1618.78, 2449.44, 4110.42, 1201.39, 4940.83, 3279.53, 560.77, 4526.78, 2031.13, 3695.57, 2864.78),
     "bench-back": (4844.19, 4380.56, 3916.90, 900.29, 3453.24, 2989.39, 2292.27, 2525.43, 1829.03, 665.22),
-    "palm-house-arch": (101.45, 48.68, 3035.11, 3301.17, 2769.05, 3567.25, 2502.97, 2236.86, 3833.36, 1970.70)}
+    "palm-house-arch": (101.55, 48.37, 3035.11, 3301.17, 2769.05, 3567.25, 2502.97, 2236.86, 3833.36, 1970.70)}
 FLANK = 3e-3           # of the frequency, to either side: several half-widths of the narrow peaks
 EVEN = np.geomspace(20.0, 5000.0, 22)
 
@@ -214,7 +214,7 @@ def test_the_highest_peaks_are_compared(sample):
     level = response.level_db
     maxima = 1 + np.flatnonzero((level[1:-1] > level[:-2]) & (level[1:-1] > level[2:]))
     highest = response.frequency[maxima[np.argsort(-level[maxima])[:5]]]
-    assert np.all(np.min(np.abs(highest[:, None]/np.array(PEAKS[name]) - 1), axis=1) < 0.02)    # the grid's step
+    assert np.all(np.min(np.abs(highest[:, None]/np.array(PEAKS[name]) - 1), axis=1) < FLANK)
 
 
 def test_needle_peaks_in_frequency_and_width(sample):
