@@ -136,8 +136,10 @@ def excursion(design, found: Response):
     """
     rest, moved = _per_volt(found.motion)
     motion = np.concatenate([found.motion.unit, found.motion.line], axis=1)*found.amplitude
+    size = np.maximum(np.abs(motion).max(axis=1), 1e-300)       # an undamped motion must not overflow single precision
+    motion = motion/size[:, None]
     parts = (np.concatenate([motion.real, motion.imag]).astype(np.float32) @ moved).reshape(2, len(motion), 3, -1)
-    d_field, d1, d2 = np.sqrt(np.square(parts[0]) + np.square(parts[1])).transpose(1, 0, 2)
+    d_field, d1, d2 = (np.sqrt(np.square(parts[0]) + np.square(parts[1]))*size[:, None, None]).transpose(1, 0, 2)
     field, s1, s2 = rest
     peak_field, least = (field + d_field).max(axis=1), np.minimum(s1 - d1, s2 - d2).min(axis=1)
     limit = design.film.breakdown_field

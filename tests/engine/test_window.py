@@ -177,6 +177,16 @@ def test_largest_amplitude_meets_its_limit():
     assert moved.peak_field.max() == pytest.approx(design.film.breakdown_field, rel=1e-6) and moved.least_stress.min() > 0
 
 
+def test_excursion_without_any_damping_is_finite():
+    """Grid points fall on undamped resonances: numbers, however large."""
+    design = sample("bench-back").with_values({"film.loss_factor": 0.0, "centre.spring_loss_factor": 0.0,
+                                               "rear.loss_factor": 0.0, "air.load": False})
+    with np.errstate(all="raise", under="ignore"):
+        moved = limits.excursion(design, engine.response(design))
+    for values in (moved.peak_field, moved.least_stress, moved.stroke, moved.largest_amplitude):
+        assert np.all(np.isfinite(values))
+
+
 def test_breakdown_band_of_an_even_field():
     """Weibull 1951: an even field E over area S fails at E0 (A0 ln(1/(1-F))/S)^(1/m)."""
     design = cone(2.5, 1.3, 0.05, 1.0, 0.0).with_values({"drive.amplitude": 100.0, "film.breakdown_field": 60e6})
