@@ -288,10 +288,10 @@ def sources(board):
     return found
 
 
-def test_the_named_sources_are_there_and_only_keys_talk_to_the_server():
+def test_the_named_sources_are_there_and_only_two_talk_to_the_server():
     found = sources(Board())
     assert {"level", "share", "phasor", "section", "gallery"} <= set(found)
-    assert [name for name, source in found.items() if source.syncable] == ["asked", "pressed"]
+    assert {name for name, source in found.items() if source.syncable} == {"asked", "pressed"}
 
 
 def test_showing_replaces_data_and_builds_nothing(bench, tauter):

@@ -67,7 +67,7 @@ class Visitor:
                     asyncio.get_running_loop().call_later(PAINT, self._paint, count)
 
     def _paint(self, count):
-        asyncio.ensure_future(self._ask({"painted": count}))
+        self.painting = asyncio.ensure_future(self._ask({"painted": count}))
 
     async def _ask(self, words):
         data = {"type": "map", "entries": [["json", [json.dumps(words)]], ["count", [f"{time.monotonic()}"]]]}
