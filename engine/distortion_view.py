@@ -90,7 +90,7 @@ def amplitude_series(design, frequency, count=9):
     return AmplitudeSeries(float(frequency), amplitude, thd, faults, found)
 
 
-def distortion_map(design, band, n_freq=40, n_amplitudes=12, progress=None, stop=None):
+def distortion_map(design, band, n_freq=60, n_amplitudes=12, progress=None, stop=None):
     """THD of the design's law over the band and over amplitudes up to twice the design's, lowest amplitude first.
 
     Parameters

@@ -45,7 +45,7 @@ class Curves:
             plot.add_glyph(self.data, inks(line, line_color="ink" if name == "thd" else "muted"))
         bar = Segment(x0="x0", y0="y0", x1="x1", y1="y1", line_width=6, line_alpha=0.75)
         plot.add_glyph(self.bars, inks(bar, line_color="warn"))
-        text(plot, inks, self.names, color="ink", text_align="center", y_offset=-6)
+        text(plot, inks, self.names, color="ink", text_align="center", y_offset=-9)
         text(plot, inks, self.bar_words, color="warn", text_align={"field": "align"}, x_offset={"field": "shift"}, y_offset=-6)
         text(plot, inks, self.fault, color="warn", text_align="left", x_offset=6, y_offset=16)
         text(plot, inks, self.reading, size=12, color="accent", text_align="right", x_offset=-28, y_offset=-10,

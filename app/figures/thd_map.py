@@ -56,7 +56,7 @@ class ThdMap:
         low, high = math.log10(found.amplitude[0]) - half[1], math.log10(found.amplitude[-1]) + half[1]
         volts = frequency_ticks(found.amplitude[0], found.amplitude[-1])
         self.axes.set(x, (np.log10(volts), [theme.quantity(v, "V") for v in volts]), (low, high),
-                      f"THD, {found.law} drive: 0.01 % pale, 100 % dark", "Frequency, Hz")
+                      f"THD, {found.law} drive: faint 0.01 %, strong 100 %", "Frequency, Hz")
         image = log_percent(found.thd)
         self.data.data = {"image": [image], "x": [left], "y": [low], "dw": [right - left], "dh": [high - low]}
         frequency, amplitude = np.meshgrid(found.frequency, found.amplitude)
