@@ -142,3 +142,41 @@ def test_extreme_resistances_and_limits_end_in_numbers():
         for name in ("pressure", "impedance", "current", "electrode_voltage", "apparent_power", "dissipated_power",
                      "limited_level_db", "level_db", "sound_power"):
             assert np.all(np.isfinite(getattr(found, name))), (changes, name)
+
+
+def test_a_source_without_current_is_silent_in_words():
+    """Current limit 0 A: no voltage reaches the film, so the level that is left is silence (elementary)."""
+    found = engine.response(engine.Design().with_values({"drive.current_limit": 0.0}), np.geomspace(20, 5000, 30))
+    assert np.all(found.limited_level_db == -400) and found.current_limited_above == found.frequency[0]
+    assert any(f.name == "current" and "more current" in f.text for f in found.findings)
+
+
+def test_resistances_of_zero_are_the_neutral_case():
+    """Ohm's law without a resistor: the whole voltage reaches the film, no loss of its own."""
+    found = engine.response(engine.Design().with_values({"electrodes.sheet_resistance": 0.0, "drive.source_resistance": 0.0}),
+                            np.geomspace(20, 5000, 30))
+    np.testing.assert_allclose(found.electrode_voltage, found.amplitude, rtol=1e-12)
+    assert found.charging_corner is None and not {f.name for f in found.findings} & {"charging", "current"}
+
+
+@pytest.mark.parametrize("path", ("electrodes.sheet_resistance", "drive.source_resistance", "drive.current_limit"))
+@pytest.mark.parametrize("value", (np.inf, np.nan, -1.0))
+def test_endless_and_negative_values_are_refused(path, value):
+    """The message names the field and what is allowed."""
+    with pytest.raises(engine.InvalidDesign, match=f"{path}.*(Give a number from|Raise it to at least)"):
+        engine.Design().with_values({path: value})
+
+
+@pytest.mark.parametrize("zones", (((0.5, 0.5001, 1.0),), ((0.0, 1e-9, 1.0), (1e-9, 1.0, 1.0))))
+def test_electrodes_narrower_than_an_element_are_refused_in_words(zones):
+    """Zones are not computed yet, however narrow: said, not computed wrongly."""
+    with pytest.raises(engine.InvalidDesign, match=r"electrodes\.zones.*not computed yet"):
+        engine.Design().with_values({"electrodes.zones": zones})
+
+
+def test_a_film_narrower_than_its_thickness_ends_in_numbers():
+    """Electrodes on a rim of 0.1 mm: mesh and line follow the film's width."""
+    thin = engine.Design().with_values({"geometry.frame_radius": 5e-3, "geometry.centre_radius": 4.9e-3,
+                                        "centre.spring_free_height": 1e-4, "electrodes.sheet_resistance": 1e5})
+    found = engine.response(thin, np.geomspace(20, 5000, 30))
+    assert np.all(np.isfinite(found.level_db)) and np.all(np.isfinite(found.impedance))

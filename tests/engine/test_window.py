@@ -1,7 +1,10 @@
 """The voltage window against closed forms, its own rest states and modes, and through turning points."""
 
+from dataclasses import replace
+
 import numpy as np
 import pytest
+from scipy.optimize import bisect
 
 import engine
 from engine import film as flm
@@ -9,7 +12,9 @@ from engine import limits, mesh, statics
 from engine.branch import arc, follow
 from engine.film import VACUUM_PERMITTIVITY
 from tests.engine.dimensionless import EPS_R, MU, H, cone, voltage
+from tests.engine.test_slow_chain import plan_of
 from tests.references import membranes as ref
+from tests.references import slow_chain
 
 samples = pytest.mark.parametrize("name", ("fern-label", "bench-back", "palm-house-arch"))
 
@@ -55,6 +60,7 @@ def test_loss_of_tension(row):
     design = cone(2.5, prestretch, e, 0.5, 0.0, mass=1e-5).with_values({"drive.amplitude": 0.2*voltage(lost)})
     window = engine.voltage_window(design)
     assert window.slack_voltage == pytest.approx(voltage(lost), rel=1e-3)
+    assert window.pull_in_voltage == pytest.approx(voltage(lost), rel=1e-3)
     # capacitance of the flat film: l^4 times that of the film as bought
     assert window.capacitance[0] == pytest.approx(window.capacitance[5], rel=1e-9)
 
@@ -91,6 +97,36 @@ def test_walls(name):
     engine.equilibrium(design.with_values({"drive.amplitude": 0.0, "drive.bias": 0.999*window.pull_in_voltage}))
     with pytest.raises(engine.NoRestState):
         engine.equilibrium(design.with_values({"drive.amplitude": 0.0, "drive.bias": 1.001*window.pull_in_voltage}))
+
+
+@samples
+def test_slack_and_breakdown_by_shooting_and_bisection(name):
+    """Rest states of tests/references/slow_chain.py (shooting, shares nothing with the engine), bisected in the bias to 1e-4:
+    where the least stress falls to zero and where V lam1 lam2/H reaches the breakdown field."""
+    design = sample(name)
+    window, plan = engine.voltage_window(design), plan_of(design)
+
+    def taut(bias):
+        rest = slow_chain.solve_rest(replace(plan, bias=bias), 200)
+        e = slow_chain.field_number(replace(plan, bias=bias))
+        return min(s.min() for s in slow_chain.stresses(rest.lam1, rest.lam2, e))
+
+    def field_left(bias):
+        rest = slow_chain.solve_rest(replace(plan, bias=bias), 200)
+        return design.film.breakdown_field - bias*np.max(rest.lam1*rest.lam2)/plan.thickness
+
+    for quantity, wall in ((taut, window.slack_voltage), (field_left, window.breakdown_voltage)):
+        assert wall == pytest.approx(bisect(quantity, 0.98*wall, 1.01*wall, rtol=1e-4), rel=1e-3)
+
+
+def test_pull_in_is_named_with_its_voltage():
+    """A design biased beyond pull-in is refused at the voltage the window gives; each names the other (consistency)."""
+    soft = cone(2.5, 1.001, 0.0, 1.0, 0.2).with_values({"film.shear_modulus": 5e3, "drive.bias": 2000.0})
+    limit = engine.voltage_window(soft).pull_in_voltage
+    for call in (engine.equilibrium, engine.response, engine.overview):
+        with pytest.raises(engine.NoRestState, match=r"pulls in at .* kV, before the bias of 2 kV: lower the bias") as refusal:
+            call(soft)
+        assert refusal.value.reason == "pull-in" and refusal.value.voltage == pytest.approx(limit, rel=1e-3)
 
 
 def test_arc_passes_a_turning_point_and_snaps():
