@@ -115,15 +115,19 @@ const redraw = (page, all = true) => {
     const { m, now, all } = page
     page.asked = page.all = false
     if (!now) return
-    if (all) {
-      drawRows(page)
-      layGallery(page)
-      laySection(page)
+    page.hidden = !onScreen(m.section_plot)          // another page is shown: these plots are drawn when it is left
+    if (!page.hidden) {
+      if (all || page.missed) {
+        drawRows(page)
+        layGallery(page)
+        laySection(page)
+      }
+      drawCursor(page)
+      drawPhasor(page)
+      setSection(page)
+      markGallery(page)
     }
-    drawCursor(page)
-    drawPhasor(page)
-    setSection(page)
-    markGallery(page)
+    page.missed = page.hidden && (page.missed || all)
     for (const draw of page.others) draw()
     for (const part of ["strip", "foot", "changes"]) setHtml(m[part], part, m.words.data[part][0] ?? "")
     setWord(m.sentence, "sentence", sentence(now, page.turns, page.f))
@@ -175,6 +179,7 @@ const boot = (m) => {
     m[name].connect(inner_height.change, laidOut)
   }
   page.own = [m.buttons, m.gallery_head, ...["level", "share", "phasor", "section", "gallery"].map((n) => m[`${n}_menu`])]
+  new ResizeObserver(() => { if (page.hidden && onScreen(m.section_plot)) redraw(page) }).observe(viewOf(m.section_plot).el)
   document.addEventListener("click", (event) => {
     const path = event.composedPath(), button = path.find((e) => e instanceof HTMLElement && e.dataset.act)
     if (button && page.own.some((model) => path.includes(viewOf(model)?.el))) ACTIONS[button.dataset.act](page, button)

@@ -58,12 +58,10 @@ class Electrical:
         plot.add_layout(self.corners[-1])
         return plot
 
-    def show(self, view):
-        """Replace everything by a LimitsView's."""
-        found = view.response
+    def show(self, found, limit):
+        """Replace everything by a Response's, under a limit of the source's current (A, or None)."""
         values = self.data.data = _columns(found)
         magnitude, current = values["impedance"], values["current"]
-        limit = view.design.drive.current_limit
         self._axis("impedance", *_decades(magnitude), "Ω")
         self._axis("current", *_decades(current, limit), "A")
         self._phase(values["phase"])

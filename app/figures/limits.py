@@ -28,7 +28,7 @@ class LimitsBoard:
     """
 
     def __init__(self, board, on_bias):
-        self._board, self._on_bias = board, on_bias
+        self._board, self._on_bias, self._seen = board, on_bias, None
         self._window, self._electrical = Window(board.inks), Electrical(board.inks, board.x_range)
         self._plots = {"window": self._window.height, "tuning": self._window.modes, **self._electrical.plots}
         self._menus = {name: board.html(menu_html(name), position="absolute", top="0", right="0", z_index="2")
@@ -68,10 +68,17 @@ class LimitsBoard:
         low, high = view.swing
         with self._board.in_one():
             self._window.show(view)
-            self._electrical.show(view)
+            self.show_response(view.response, view.design.drive.current_limit)
             self.now.data = {"bias_kv": [view.design.drive.bias / 1e3], "low_kv": [low / 1e3], "high_kv": [high / 1e3],
                              "stem": [file_stem(view.design.name)], "html": [verdict_html(view)]}
             self.dim(None)
+
+    def show_response(self, response, current_limit):
+        """Replace what the source sees, which is known before the window is; nothing where it is shown already."""
+        if response is not self._seen:
+            self._seen = response
+            with self._board.in_one():
+                self._electrical.show(response, current_limit)
 
     def hold(self, view):
         """Keep a LimitsView in grey; None takes it away."""

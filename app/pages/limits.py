@@ -38,6 +38,8 @@ class LimitsPage:
         session = self.session
         if self.board is None or session.page != "limits":
             return
+        if session.overview is not None and any(event.name == "overview" for event in events):
+            self.board.show_response(session.overview.response, session.overview.design.drive.current_limit)
         if session.limits is not None and (not events or any(event.name == "limits" for event in events)):
             self.board.show(session.limits)
         problem = session.problem
