@@ -10,9 +10,11 @@ from app.wav import read_wav
 
 RATE = 48000             # Hz, of every clip
 TAIL = 0.2               # s of silence at a clip's end, in which the film rings out
+TONE = 3.0               # s a tone lasts
 FADE = 0.03              # s in which a signal comes and goes
-SWEEP = (20.0, 10e3)     # Hz
-TONES = (10.0, 10e3)     # Hz, frequencies of tones
+TONES = (10.0, 7e3)      # Hz, frequencies of tones: what is rendered ends at 7.5 kHz
+SWEEP = (20.0, 7e3)      # Hz
+NOISE = (50.0, 7e3)      # Hz
 SEED = 4                 # of the noise
 FAINTEST = 1e-5          # peak of what counts as a sound, full scale 1
 # Melody of our own: (semitones above A4, units of 0.16 s), and its bass
@@ -21,7 +23,7 @@ MELODY = ((-12, 2), (-5, 1), (-2, 1), (3, 2), (2, 1), (-2, 1), (0, 3), (-4, 1), 
 BASS = ((-36, 4), (-33, 4), (-28, 4), (-31, 2), (-29, 4), (-36, 4))
 
 
-@dataclass(frozen=True)
+@dataclass(frozen=True, eq=False)
 class Clip:
     """A signal of largest value 1 at `RATE`. frequency: Hz, of a single tone; None for anything else."""
 
@@ -32,12 +34,19 @@ class Clip:
 
 def tone(frequency):
     """Clip of one tone, frequency in Hz."""
-    return Clip(f"tone {frequency:.4g} Hz", _finished(np.sin(2 * np.pi * frequency * _time(3.0))), float(frequency))
+    return Clip(f"tone {frequency:.4g} Hz", _finished(np.sin(2 * np.pi * frequency * _time(TONE))), float(frequency))
+
+
+def periodic(frequency, components):
+    """Samples (n,) of components (n_harmonics+1,) complex, the mean first, that come and go as a `tone` does."""
+    turning = np.exp(2j * np.pi * frequency * _time(TONE))
+    wave = np.polynomial.polynomial.polyval(turning, np.asarray(components)).real
+    return np.pad(_faded(wave), (0, round(TAIL * RATE)))
 
 
 def two_tones(low, high):
     """Clip of two equally strong tones, frequencies in Hz."""
-    t = _time(3.0)
+    t = _time(TONE)
     both = np.sin(2 * np.pi * low * t) + np.sin(2 * np.pi * high * t)
     return Clip(f"tones {low:.4g} and {high:.4g} Hz", _finished(both))
 
@@ -57,12 +66,17 @@ def melody():
 
 
 def noise():
-    """Clip of six bursts of pink noise, 50 Hz to 10 kHz, with pauses between; always the same."""
+    """Clip of six bursts of pink noise, of the band `NOISE`, with pauses between; always the same."""
     n, frequency = round(0.3 * RATE), np.fft.rfftfreq(round(0.3 * RATE), 1 / RATE)
     rng = np.random.default_rng(SEED)
-    shape = np.where((frequency >= 50) & (frequency <= 10e3), 1 / np.sqrt(np.maximum(frequency, 1.0)), 0.0)
+    shape = np.where((frequency >= NOISE[0]) & (frequency <= NOISE[1]), 1 / np.sqrt(np.maximum(frequency, 1.0)), 0.0)
     bursts = [np.fft.irfft(shape * np.exp(2j * np.pi * rng.random(len(shape))), n) for _ in range(6)]
     return Clip("noise bursts", _finished(np.concatenate([np.pad(_faded(b), (0, round(0.2 * RATE))) for b in bursts])))
+
+
+# what can be listened to: name -> its maker and how many frequencies it takes
+SIGNALS = {"tone": (tone, 1), "two tones": (two_tones, 2), "sweep": (sweep, 0), "melody": (melody, 0),
+           "noise bursts": (noise, 0)}
 
 
 def from_wav(data, name):

@@ -9,6 +9,7 @@ from scipy.signal import lfilter
 SHELF = 1681.974450955533, 0.7071752369554196          # Hz, quality
 HIGH_PASS = 38.13547087602444, 0.5003270373238773
 SHELF_DB, SHELF_MIDDLE = 3.999843853973347, 0.4996667741545416
+P_REF = 20e-6            # Pa
 BLOCK, BLOCK_STEP = 0.4, 0.1                 # s
 ABSOLUTE_GATE, RELATIVE_GATE = -70.0, -10.0  # LKFS; LU below the loudness that passes the absolute gate
 PLAYED_AT = -23.0        # LKFS of every version where its peaks allow
@@ -59,19 +60,37 @@ def _lkfs(power):
 
 
 @dataclass(frozen=True)
+class Sound:
+    """What is known of a sound. peak: Pa; loudness: LKFS with the peak as full scale, -inf for silence; level_db: re 20 µPa."""
+
+    peak: float
+    loudness: float
+    level_db: float
+
+
+def measured(pressure, rate):
+    """Sound of a pressure (n,) Pa. level_db is the r.m.s. of the loudest 0.4 s: of a tone, its steady level (ISO 1683)."""
+    peak = float(np.max(np.abs(pressure)))
+    if not peak > 0:
+        return Sound(0.0, -math.inf, -math.inf)
+    scaled = np.asarray(pressure, float) / peak      # the absolute gate must not see how strong a sound is
+    energy = np.cumsum(np.concatenate([[0.0], scaled**2]))
+    block = min(round(BLOCK * rate), len(scaled))
+    power = np.max(energy[block:] - energy[:-block]) / block
+    return Sound(peak, loudness(scaled, rate), 10 * math.log10(power) + 20 * math.log10(peak / P_REF))
+
+
+@dataclass(frozen=True)
 class Matching:
-    """Gains that make versions equally loud. gain: name -> factor, 0 for a silent one; target: LKFS they are played at."""
+    """Gains that make sounds equally loud. gain: name -> factor, full scale over Pa; 0 for silence. target: LKFS."""
 
     gain: dict
     target: float
 
 
-def matched(versions, rate):
-    """Matching of versions (name -> samples (n,)): at `PLAYED_AT`, or as loud as the most peaked one can be in full scale."""
-    peak = {name: float(np.max(np.abs(samples))) for name, samples in versions.items()}
-    sounding = [name for name in versions if peak[name] > 0]
-    # loudness over each one's own peak: the absolute gate must not see how loud a version is
-    own = {name: loudness(versions[name] / peak[name], rate) for name in sounding}
-    target = min([PLAYED_AT, *(value + 20 * math.log10(HEADROOM) for value in own.values() if value > -math.inf)])
-    return Matching({name: 10 ** ((target - own[name]) / 20) / peak[name] if own.get(name, -math.inf) > -math.inf else 0.0
-                     for name in versions}, target)
+def matched(sounds):
+    """Matching of sounds (name -> Sound): at `PLAYED_AT`, or as loud as the most peaked one can be in full scale."""
+    heard = {name: sound.loudness for name, sound in sounds.items() if sound.loudness > -math.inf}
+    target = min([PLAYED_AT, *(value + 20 * math.log10(HEADROOM) for value in heard.values())])
+    return Matching({name: 10 ** ((target - heard[name]) / 20) / sound.peak if name in heard else 0.0
+                     for name, sound in sounds.items()}, target)

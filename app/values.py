@@ -103,6 +103,17 @@ def typed_band(text):
     return tuple(float(digits) * (1e3 if kilo else 1.0) for digits, kilo in found)
 
 
+def typed_frequency(text, bounds):
+    """Hz of a typed frequency within bounds (low, high): "440", "69.3 Hz", "1.2 kHz"; ValueError if it is none."""
+    match = re.fullmatch(r"(\d+\.?\d*|\.\d+)\s*(k?)(?:hz)?", text.strip().lower().replace(",", "."))
+    low, high = bounds
+    frequency = float(match[1]) * (1e3 if match[2] else 1.0) if match else 0.0
+    if not low <= frequency <= high:
+        what = f"{frequency:g} Hz is outside of what is rendered." if match else f"{text.strip()[:20]!r} is no frequency."
+        raise ValueError(f"{what} Type one from {low:g} Hz to {high / 1e3:g} kHz, for example 440 Hz.")
+    return frequency
+
+
 def band_text(band):
     """A band as it is written on the screen."""
     return " – ".join(f"{edge / 1e3:g} kHz" if edge >= 1e3 else f"{edge:g} Hz" for edge in band)

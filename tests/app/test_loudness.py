@@ -8,7 +8,7 @@ import math
 import numpy as np
 import pytest
 
-from app.loudness import k_weighting, loudness, matched
+from app.loudness import k_weighting, loudness, matched, measured
 
 RATE = 48000
 TWO_CHANNELS = 10 * math.log10(2)
@@ -61,12 +61,22 @@ def test_matched_versions_are_equally_loud_and_within_full_scale():
     peaked[::9600] = 1.0
     versions = {"faint": 1e-4 * sine(0, 1.0), "low": 40.0 * sine(0, 1.0, 60.0), "noise": rng.normal(0, 0.3, RATE),
                 "clicks": peaked, "nothing": np.zeros(RATE)}
-    match = matched(versions, RATE)
+    match = matched({name: measured(samples, RATE) for name, samples in versions.items()})
     played = {name: match.gain[name] * samples for name, samples in versions.items()}
     assert match.gain["nothing"] == 0.0
     for name in ("faint", "low", "noise", "clicks"):
         assert loudness(played[name], RATE) == pytest.approx(match.target, abs=0.01)
         assert np.max(np.abs(played[name])) < 10 ** (-0.99 / 20)
     assert np.max(np.abs(played["clicks"])) == pytest.approx(10 ** (-1 / 20))      # the one that decides
-    match = matched({"low": versions["low"], "faint": versions["faint"]}, RATE)
+    match = matched({name: measured(versions[name], RATE) for name in ("low", "faint")})
     assert match.target == -23.0
+
+
+def test_the_level_is_of_the_loudest_part():
+    """Source: ISO 1683: 1 Pa r.m.s. is 94 dB re 20 µPa (93.98)."""
+    tone = np.concatenate([np.zeros(RATE), math.sqrt(2) * sine(0.0, 1.0), 0.5 * sine(0.0, 1.0)])
+    sound = measured(tone, RATE)
+    assert sound.level_db == pytest.approx(20 * math.log10(1 / 20e-6), abs=0.01)
+    assert sound.peak == pytest.approx(math.sqrt(2), rel=1e-3)
+    assert measured(0.1 * sine(0.0, 0.1), RATE).level_db == pytest.approx(20 * math.log10(0.1 / math.sqrt(2) / 20e-6), abs=0.01)
+    assert measured(np.zeros(10), RATE).level_db == -math.inf

@@ -11,6 +11,7 @@ from app.values import (
     on_slider,
     slider_scale,
     typed_band,
+    typed_frequency,
     typed_list,
     typed_number,
     value_text,
@@ -93,3 +94,17 @@ def test_bands(text, band):
 def test_bad_bands(text):
     with pytest.raises(ValueError, match="two frequencies"):
         typed_band(text)
+
+
+@pytest.mark.parametrize(("text", "frequency"), [
+    ("440", 440.0), (" 69,3 Hz", 69.3), ("1.2 kHz", 1200.0), ("1k", 1000.0), (".1k", 100.0), ("440hz", 440.0)])
+def test_frequencies(text, frequency):
+    assert typed_frequency(text, (10.0, 7e3)) == pytest.approx(frequency)
+
+
+@pytest.mark.parametrize(("text", "words"), [
+    ("", "no frequency"), ("high", "'high' is no frequency"), ("1 2", "no frequency"), ("-5", "no frequency"),
+    ("8 kHz", "8000 Hz is outside.*10 Hz to 7 kHz"), ("5", "5 Hz is outside")])
+def test_bad_frequencies(text, words):
+    with pytest.raises(ValueError, match=words):
+        typed_frequency(text, (10.0, 7e3))
