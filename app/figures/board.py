@@ -1,6 +1,5 @@
 """All figures of the first page and their one cursor: built once, then only data are replaced."""
 
-from html import escape
 from pathlib import Path
 
 import numpy as np
@@ -11,17 +10,18 @@ from app.figures.canvas import Inks, source
 from app.figures.columns import columns
 from app.figures.gallery import Gallery
 from app.figures.phasor import Phasor
+from app.figures.places import Places
 from app.figures.section import Section
 from app.figures.spine import Spine
 from app.figures.strip import changes_html, foot_html, strip_html
 from app.wire import Inbox, Outbox
 
 HERE = Path(__file__).parent
-SCRIPTS = ("parcel", "format", "reading", "words", "spine", "phasor", "section", "gallery", "save", "cursor", "boot")
+SCRIPTS = ("parcel", "html", "format", "reading", "words", "spine", "phasor", "section", "gallery", "save", "cursor", "rest",
+           "pages", "boot")
 SENT = ("level", "rows", "motion", "shapes", "nodes", "gallery", "moving", "still")
 WORDS = ("strip", "foot", "changes")
 PLOTS = ("level", "share", "phasor", "section", "gallery")
-LAST_GOOD = '<p class="notice aside">last good state</p>'
 
 
 class Board:
@@ -37,14 +37,9 @@ class Board:
         self._style = InlineStyleSheet(css=(HERE.parent / "board.css").read_text(encoding="utf-8"))
         self._spine, self._phasor = Spine(self.inks), Phasor(self.inks)
         self._section, self._gallery = Section(self.inks), Gallery(self.inks)
-        self._plots = {"level": self._spine.level, "share": self._spine.share, "phasor": self._phasor.plot,
-                       "section": self._section.plot, "gallery": self._gallery.plot}
-        self._menus = {name: self.html(menu_html(name), position="absolute", top="0", right="0", z_index="2")
-                       for name in PLOTS}
-        self._notices = {name: self.html("", position="absolute", top="32%", left="12%", width="76%", z_index="2")
-                         for name in PLOTS}
-        for notice in self._notices.values():
-            notice.visible = False
+        plots = {"level": self._spine.level, "share": self._spine.share, "phasor": self._phasor.plot,
+                 "section": self._section.plot, "gallery": self._gallery.plot}
+        self._places = Places(self.html, plots)
         spine, modes = self._spine, self._gallery.modes
         self._sent = {"level": spine.level_source, "gallery": modes,
                       **{name: source(name, **_EMPTY[name]) for name in _EMPTY}}
@@ -71,8 +66,9 @@ class Board:
         self._buttons.sizing_mode = None
         self.sentence = Row(self._sentence, self._buttons, sizing_mode="stretch_width")
         self._gallery_head = self.html(_GALLERY_HEAD)
-        self.level, self.share, self.phasor, self.section = (self._box(name) for name in PLOTS[:4])
-        self.gallery = Column(self._gallery_head, self._box("gallery"), sizing_mode="stretch_both")
+        boxes = self._places.boxes
+        self.level, self.share, self.phasor, self.section = (boxes[name] for name in PLOTS[:4])
+        self.gallery = Column(self._gallery_head, boxes["gallery"], sizing_mode="stretch_both")
         self.changes.visible = False
 
     def html(self, text, **styles):
@@ -82,13 +78,8 @@ class Board:
         words = Div(text=text, styles=styles, stylesheets=[self._style], syncable=False, margin=0, **options)
         return self.inks.host(words)
 
-    def _box(self, name):
-        """A plot with its save menu and its notice over it."""
-        return box(name, self._plots[name], self._menus[name], self._notices[name])
-
     def _start_browser_code(self):
-        models = {f"{name}_plot": plot for name, plot in self._plots.items()}
-        models |= {f"{name}_menu": menu for name, menu in self._menus.items()}
+        models = self._places.models()
         models |= {**self._sent, **{f"held_{name}": sent for name, sent in self._held_sent.items()}}
         spine, section, gallery = self._spine, self._section, self._gallery
         models |= {"parcel": self._outbox.model, "asked": self.inbox.model, "cursor": self.cursor}
@@ -141,15 +132,7 @@ class Board:
     def dim(self, text):
         """Dim the plots and say the text over them; None lights them up again."""
         with self.in_one():
-            opacity = "1" if text is None else "0.35"
-            dimmed = [*self._plots.values(), self.strip, self._sentence]
-            for model in dimmed:
-                if model.styles.get("opacity", "1") != opacity:
-                    model.styles = {**model.styles, "opacity": opacity}
-            for name, notice in self._notices.items():
-                set_text(notice, "" if text is None else LAST_GOOD if name != "level" else
-                     f'<p class="notice" role="alert">{escape(text)}</p>')
-                notice.visible = text is not None
+            self._places.dim(text, (self.strip, self._sentence))
 
     def set_dark(self, dark):
         """Light or dark colours everywhere."""
@@ -187,18 +170,6 @@ class Board:
         return self._outbox.together()
 
 
-def box(name, plot, menu, notice):
-    """A plot with its save menu and its notice over it."""
-    return Column(plot, menu, notice, sizing_mode="stretch_both", css_classes=[f"plot-{name}"],
-                  styles={"position": "relative"})
-
-
-def set_text(words, text):
-    """Set HTML only where it changes: an unchanged one is drawn anew too."""
-    if words.text != text:
-        words.text = text
-
-
 def first_cursor(overview):
     """Frequency of the highest peak of the level in the band below the estimate; of the highest level if none is."""
     response, (low, high) = overview.response, overview.band
@@ -226,12 +197,3 @@ _GALLERY_HEAD = """<div class="bar" role="group" aria-label="Modes"><b>Modes in 
 <button data-act="previous-sheet" aria-label="previous modes" tabindex="-1">‹</button>
 <span data-word="sheet"></span>
 <button data-act="next-sheet" aria-label="next modes" tabindex="-1">›</button><span class="menu"></span></div>"""
-
-
-def menu_html(name):
-    """The small save menu of a plot."""
-    forms = "".join(f'<button data-act="save" data-plot="{name}" data-form="{form}">{form.upper()}</button>'
-                    for form in ("png", "svg", "csv"))
-    pause = '<button data-act="pause" data-word="pause">pause</button>' if name == "section" else ""
-    return (f'<div class="save">{pause}<details><summary aria-label="Save the {name} plot" title="Save this plot">⋯'
-            f"</summary><div>{forms}</div></details></div>")

@@ -123,50 +123,11 @@ const bootDistortion = (m, page) => {
   m.map_words.connect(m.map_words.change, () => queueMicrotask(draw))
   t.ACTIONS.map = () => t.ask(page, { map: true })
 
-  const points = (plot, el) => {
-    el.style.cursor = "crosshair"
-    const move = (event) => {
-      const { start, end } = plot.x_range
-      t.toNearest(page, 10 ** (start + Math.min(Math.max(t.pointed(plot, event).part, 0), 1) * (end - start)))
-    }
-    el.addEventListener("pointerdown", (event) => {
-      if (event.button !== 0) return
-      el.setPointerCapture(event.pointerId)
-      move(event)
-    })
-    el.addEventListener("pointermove", (event) => { if (el.hasPointerCapture(event.pointerId)) move(event) })
-    el.addEventListener("keydown", (event) => {
-      const way = { ArrowRight: 1, ArrowLeft: -1 }[event.key]
-      if (!way || event.ctrlKey || event.metaKey || event.altKey) return
-      event.preventDefault()
-      event.stopPropagation()
-      t.stepCursor(page, way, event.shiftKey ? 20 : 1)
-    })
-  }
-
   // ---- places, keys, saving
-  const dressed = new WeakSet()
-  const dress = (name) => {
-    const plot = m[name], view = t.viewOf(plot)
-    if (!view || dressed.has(view.el)) return
-    dressed.add(view.el)
-    t.restCopies(view)
-    view.el.tabIndex = 0
-    view.el.setAttribute("role", OVER_FREQUENCY.includes(name) ? "application" : "img")
-    view.el.setAttribute("aria-label", SAID[name])
-    if (OVER_FREQUENCY.includes(name)) points(plot, view.el)
-  }
-  const laidOut = () => {
-    Object.keys(SAID).forEach(dress)
-    draw()
-  }
-  for (const name of Object.keys(SAID)) {
-    const { inner_width, inner_height } = m[name].properties
-    m[name].connect(inner_width.change, laidOut)
-    m[name].connect(inner_height.change, laidOut)
-    page.m[name] = m[name]
-    page.own.push(m[name.replace("_plot", "_menu")])
-  }
+  const laidOut = t.place(page, m, SAID, draw, (plot, el, name) => {
+    el.setAttribute("role", OVER_FREQUENCY.includes(name) ? "application" : "img")
+    if (OVER_FREQUENCY.includes(name)) t.followPointer(page, plot, el)
+  })
   page.own.push(m.map_words)
   const percents = (column) => Array.from(column, (v) => 10 ** v)
   const curves = (name) => () => {

@@ -5,9 +5,9 @@ from pathlib import Path
 
 from bokeh.models import Column, CustomJS
 
-from app.figures.board import LAST_GOOD, box, menu_html, set_text
 from app.figures.canvas import source
 from app.figures.harmonics import Cursor, Curves, Series
+from app.figures.places import Places
 from app.figures.thd_map import ThdMap
 from app.theme import file_stem
 
@@ -34,19 +34,12 @@ class DistortionBoard:
         axes = (*(curves.axes for curves in self._curves), self._cursor.bars, self._cursor.cycle, self._series.axes,
                 self._map.axes)
         self._plots = dict(zip(PLOTS, (each.plot for each in axes), strict=True))
-        self._menus = {name: board.html(menu_html(name), position="absolute", top="0", right="0", z_index="2")
-                       for name in PLOTS}
-        self._notices = {name: board.html("", position="absolute", top="32%", left="12%", width="76%", z_index="2")
-                         for name in PLOTS}
-        for notice in self._notices.values():
-            notice.visible = False
+        self._places = Places(board.html, self._plots)
         self.now = source("distortion", law=[], stem=[], bias=[], exact=[])
         self._map_words = board.html('<div data-word="map"></div>', position="absolute", top="1px", right="34px", z_index="2")
         self.words = source("distortion_words", map=[""])
-        boxes = {name: box(name, self._plots[name], self._menus[name], self._notices[name]) for name in PLOTS}
+        boxes = self._places.boxes
         boxes["map"].children = [*boxes["map"].children, self._map_words]
-        for name, made in boxes.items():
-            made.css_classes = [*made.css_classes, f"region-{name}"]
         self.plots = Column(*boxes.values(), sizing_mode="stretch_both", stylesheets=[stylesheet])
         self.say_map(None, False)
         self._start_browser_code()
@@ -54,8 +47,7 @@ class DistortionBoard:
     def _start_browser_code(self):
         sine, root = self._curves
         cursor, series = self._cursor, self._series
-        models = {f"{name}_plot": plot for name, plot in self._plots.items()}
-        models |= {f"{name}_menu": menu for name, menu in self._menus.items()}
+        models = self._places.models()
         models |= {"level_plot": self._board.level_plot, "distortion": self.now, "distortion_words": self.words,
                    "map_words": self._map_words, "sine": sine.data, "root": root.data, "sine_parts": sine.parts,
                    "root_parts": root.parts, "sine_reading": sine.reading, "root_reading": root.reading,
@@ -118,14 +110,7 @@ class DistortionBoard:
     def dim(self, text):
         """Dim the plots and say the text over them; None lights them up again."""
         with self._board.in_one():
-            opacity = "1" if text is None else "0.35"
-            for model in self._plots.values():
-                if model.styles.get("opacity", "1") != opacity:
-                    model.styles = {**model.styles, "opacity": opacity}
-            for name, notice in self._notices.items():
-                set_text(notice, "" if text is None else LAST_GOOD if name != "sine" else
-                         f'<p class="notice" role="alert">{escape(text)}</p>')
-                notice.visible = text is not None
+            self._places.dim(text)
 
     def change_colours(self):
         """What the inks do not reach."""

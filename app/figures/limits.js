@@ -99,50 +99,12 @@ const bootLimits = (m, page) => {
       moveBias(shown.bias_kv + way * KEY_STEP * (event.shiftKey ? 10 : 1) / 1000, true)
     })
   }
-  const points = (plot, el) => {
-    el.style.cursor = "crosshair"
-    const move = (event) => {
-      const { start, end } = plot.x_range
-      t.toNearest(page, 10 ** (start + Math.min(Math.max(t.pointed(plot, event).part, 0), 1) * (end - start)))
-    }
-    el.addEventListener("pointerdown", (event) => {
-      if (event.button !== 0) return
-      el.setPointerCapture(event.pointerId)
-      move(event)
-    })
-    el.addEventListener("pointermove", (event) => { if (el.hasPointerCapture(event.pointerId)) move(event) })
-    el.addEventListener("keydown", (event) => {
-      const way = { ArrowRight: 1, ArrowLeft: -1 }[event.key]
-      if (!way || event.ctrlKey || event.metaKey || event.altKey) return
-      event.preventDefault()
-      event.stopPropagation()
-      t.stepCursor(page, way, event.shiftKey ? 20 : 1)
-    })
-  }
-
   // ---- places, keys, saving
-  const dressed = new WeakSet()
-  const dress = (name) => {
-    const plot = m[name], view = t.viewOf(plot)
-    if (!view || dressed.has(view.el)) return
-    dressed.add(view.el)
-    t.restCopies(view)
-    view.el.tabIndex = 0
-    view.el.setAttribute("role", "application")
-    view.el.setAttribute("aria-label", WORDS[name])
-    ;(OVER_BIAS.includes(name) ? drags : points)(plot, view.el)
-  }
-  const laidOut = () => {
-    Object.keys(WORDS).forEach(dress)
-    draw()
-  }
-  for (const name of Object.keys(WORDS)) {
-    const { inner_width, inner_height } = m[name].properties
-    m[name].connect(inner_width.change, laidOut)
-    m[name].connect(inner_height.change, laidOut)
-    page.m[name] = m[name]
-    page.own.push(m[name.replace("_plot", "_menu")])
-  }
+  const laidOut = t.place(page, m, WORDS, draw, (plot, el, name) => {
+    el.setAttribute("role", "application")
+    if (OVER_BIAS.includes(name)) drags(plot, el)
+    else t.followPointer(page, plot, el)
+  })
   const lines = (source) => source.data.xs.flatMap((x, k) => Array.from(x, (bias, i) => [k + 1, bias, 10 ** source.data.ys[k][i]]))
   Object.assign(t.NUMBERS, {
     window: () => {

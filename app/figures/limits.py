@@ -1,13 +1,12 @@
 """Figures of the page of the limits: built when first shown, then only data are replaced; on the page's one cursor."""
 
-from html import escape
 from pathlib import Path
 
 from bokeh.models import Column, CustomJS
 
-from app.figures.board import LAST_GOOD, box, menu_html, set_text
 from app.figures.canvas import source
 from app.figures.electrical import NAMES, Electrical
+from app.figures.places import Places
 from app.figures.verdict import verdict_html
 from app.figures.window import Window
 from app.theme import file_stem
@@ -31,29 +30,21 @@ class LimitsBoard:
         self._board, self._on_bias, self._seen = board, on_bias, None
         self._window, self._electrical = Window(board.inks), Electrical(board.inks, board.x_range)
         self._plots = {"window": self._window.height, "tuning": self._window.modes, **self._electrical.plots}
-        self._menus = {name: board.html(menu_html(name), position="absolute", top="0", right="0", z_index="2")
-                       for name in self._plots}
-        self._notices = {name: board.html("", position="absolute", top="32%", left="12%", width="76%", z_index="2")
-                         for name in self._plots}
-        for notice in self._notices.values():
-            notice.visible = False
+        self._places = Places(board.html, self._plots)
         self._words = board.html('<div data-word="verdict"></div>')
         self.now = source("limits", bias_kv=[], low_kv=[], high_kv=[], stem=[], html=[])
         self.moved = source("moved_bias", volts=[], released=[], count=[])
         self.moved.syncable = True
         self.moved.on_change("data", self._take)
-        boxes = {name: box(name, plot, self._menus[name], self._notices[name]) for name, plot in self._plots.items()}
+        boxes = self._places.boxes
         self.window = Column(*(boxes[name] for name in WINDOW_PLOTS), sizing_mode="stretch_both")
         self.electrical = Column(*(boxes[name] for name in NAMES), sizing_mode="stretch_both")
-        for name, made in boxes.items():
-            made.css_classes = [*made.css_classes, f"region-{name}"]
         self.verdict = Column(self._words, sizing_mode="stretch_both")
         self._start_browser_code()
 
     def _start_browser_code(self):
         window, electrical = self._window, self._electrical
-        models = {f"{name}_plot": plot for name, plot in self._plots.items()}
-        models |= {f"{name}_menu": menu for name, menu in self._menus.items()}
+        models = self._places.models()
         models |= {f"{name}_reading": reading for name, reading in electrical.readings.items()}
         models |= {"level_plot": self._board.level_plot, "limits": self.now, "moved_bias": self.moved,
                    "verdict": self._words, "bias_words": window.bias_words, "electrical": electrical.data,
@@ -89,14 +80,7 @@ class LimitsBoard:
     def dim(self, text):
         """Dim the plots and say the text over them; None lights them up again."""
         with self._board.in_one():
-            opacity = "1" if text is None else "0.35"
-            for model in (*self._plots.values(), self._words):
-                if model.styles.get("opacity", "1") != opacity:
-                    model.styles = {**model.styles, "opacity": opacity}
-            for name, notice in self._notices.items():
-                set_text(notice, "" if text is None else LAST_GOOD if name != "window" else
-                         f'<p class="notice" role="alert">{escape(text)}</p>')
-                notice.visible = text is not None
+            self._places.dim(text, (self._words,))
 
     def _take(self, attribute, old, new):
         """The bias was moved in the picture."""

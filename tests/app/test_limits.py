@@ -119,9 +119,9 @@ def test_texts_of_users_are_escaped(board, bench):
     told = dataclasses.replace(bench, excursion=dataclasses.replace(bench.excursion, findings=(finding,)))
     assert "&lt;b&gt;y" in verdict_html(told)
     board.dim("<i>no</i>")
-    assert "&lt;i&gt;" in board._notices["window"].text
+    assert "&lt;i&gt;" in board._places.notices["window"].text
     board.dim(None)
-    assert not board._notices["window"].visible
+    assert not board._places.notices["window"].visible
 
 
 @pytest.fixture
@@ -169,9 +169,9 @@ def test_a_bias_without_rest_state_is_said_over_the_window(page):
     session, _, made, _ = page
     session.page = "limits"
     made.board.moved.data = {"volts": [12e3], "released": [True], "count": [1]}
-    assert "pulls in at" in made.board._notices["window"].text and made.board.now.data["bias_kv"] == [1.9]
+    assert "pulls in at" in made.board._places.notices["window"].text and made.board.now.data["bias_kv"] == [1.9]
     session.state.undo()
-    assert not made.board._notices["window"].visible
+    assert not made.board._places.notices["window"].visible
 
 
 def test_the_judgement_has_controls_of_its_own(page):
