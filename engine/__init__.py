@@ -27,6 +27,7 @@ from engine.errors import InvalidDesign, NoRestState, NotConverged, Stopped
 from engine.limits import Excursion, Judgement, LimitsView, Margin, breakdown_band, excursion, limits_view, margins
 from engine.modes import Modes, modes
 from engine.response import Response, prepare, response
+from engine.signals import render
 from engine.statics import Equilibrium, Finding, equilibrium
 from engine.summary import KeyFigures, Overview, energy_share, key_figures, overview
 from engine.window import VoltageWindow, voltage_window
@@ -38,4 +39,4 @@ __all__ = [
     "NotConverged", "Overview", "Rear", "Response", "Stopped", "VoltageWindow", "amplitude_series", "breakdown_band",
     "compensated_drive", "distortion", "distortion_map", "distortion_view", "energy_share", "equilibrium",
     "excursion", "intermodulation", "key_figures", "limits_view", "load", "margins", "modes", "overview", "prepare",
-    "response", "save", "voltage_window"]
+    "render", "response", "save", "voltage_window"]

@@ -65,7 +65,7 @@ def solve(task, drive):
             keep = ~settled & np.isfinite(change[rows])
             rows, past = rows[keep], [[part[keep] for part in pair] for pair in past]
             past = [*past, [x[rows], step[keep]]][-MEMORY - 1:]
-            x[rows] = _extrapolated(past, w[keep]) if len(rows) else x[rows]
+            x[rows] = extrapolated(past, w[keep]) if len(rows) else x[rows]
     return x, converged
 
 
@@ -74,7 +74,7 @@ def _size(x, weight, task):
     return np.linalg.norm(x[..., :len(task.static)]*weight, axis=(1, 2))
 
 
-def _extrapolated(past, weight):
+def extrapolated(past, weight):
     """Next state of each row from its past pairs (state, step): the combination whose step is the least."""
     x, step = past[-1]
     if len(past) == 1:

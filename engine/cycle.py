@@ -67,11 +67,12 @@ def nonlinear(system, basis, reduced):
 
 def _fields(model, motion, line, wave):
     """r, r', z' (n, n_samples, n_points) of motions and V, which broadcasts against them."""
-    y = wave @ (motion @ model.fields)
+    y = motion @ model.fields
+    y = y if wave is None else wave @ y
     r, dr, dz = np.split(y, 3, axis=-1)
     for part, rest in zip((r, dr, dz), model.rest, strict=True):
         part += rest
-    volts = wave @ line
+    volts = line if wave is None else wave @ line
     return y, r, dr, dz, model.bias + (volts if len(model.functions) == 1 else volts @ model.functions)
 
 
@@ -84,13 +85,14 @@ def force_and_charge(model, motion, line, wave, back, charged):
     """Coefficients of dPi/dq (n, n_coef, n_basis) and of the charge (n, n_coef, n_line), None unless charged.
 
     Parameters: motion (n, n_coef, n_basis) m, line (n, n_coef, n_line) V of signal: coefficients of the time functions
-    wave (n_samples, n_coef); back (n_coef, n_samples) takes samples to coefficients. One precision throughout.
+    wave (n_samples, n_coef); back (n_coef, n_samples) takes samples to coefficients; both None: the coefficients are the
+    samples themselves. One precision throughout.
     """
     n, n_coef, _ = motion.shape
     n_points = len(model.area)
     force = np.empty((n, n_coef, motion.shape[2]), motion.dtype)
     charge = np.empty((n, n_coef, len(model.functions)), motion.dtype) if charged else None
-    for block in _blocks(n, len(wave), n_points):
+    for block in _blocks(n, n_coef if wave is None else len(wave), n_points):
         y, r, dr, dz, V = _fields(model, motion[block], line[block], wave)
         A, B = dr*dr + dz*dz, r/model.reference_radius
         B *= B
@@ -98,12 +100,12 @@ def force_and_charge(model, motion, line, wave, back, charged):
             C = A*B
             C *= model.area*model.film.areal_capacitance
             C *= V
-            charge[block] = (back @ C) @ model.functions.T
+            charge[block] = (C if back is None else back @ C) @ model.functions.T
         wA, wB = flm.energy_slopes(model.film, A, B, V)
         r *= wB
         dr *= wA
         dz *= wA
-        force[block] = (back @ y) @ model.weights
+        force[block] = (y if back is None else back @ y) @ model.weights
     force += model.film.spring_rate*(motion @ model.centre)[..., None]*model.centre
     return force, charge
 
@@ -111,16 +113,27 @@ def force_and_charge(model, motion, line, wave, back, charged):
 def extremes(model, motion, line, wave):
     """Extremes of motions given as in force_and_charge."""
     n, film = len(motion), model.film
-    out = Extremes(np.empty(n), np.empty(n), np.empty((n, len(wave))))
-    r0, _, dz0 = model.rest
-    w = model.area/(2*np.pi*model.reference_radius)
-    for block in _blocks(n, len(wave), len(model.area)):
+    n_samples = motion.shape[1] if wave is None else len(wave)
+    out = Extremes(np.empty(n), np.empty(n), np.empty((n, n_samples)))
+    for block in _blocks(n, n_samples, len(model.area)):
         _, r, dr, dz, V = _fields(model, motion[block], line[block], wave)
         A, B = dr*dr + dz*dz, (r/model.reference_radius)**2
         wA, wB = flm.energy_slopes(film, A, B, V, electrodes=False)
         out.least_stress[block] = 2*np.minimum(A*wA, B*wB).min(axis=(1, 2))/film.thickness
         out.peak_field[block] = np.sqrt((V*V*A*B).max(axis=(1, 2)))/film.layer_thickness
-        # -pi (r0+u)^2 (z'+slope), its terms of second and third order
-        u, slope = r - r0, dz - dz0
-        out.extra_volume[block] = -np.pi*((u*u*dz + 2*r0*u*slope) @ w)
+        out.extra_volume[block] = _extra(model, r - model.rest[0], dz - model.rest[2])
     return out
+
+
+def _extra(model, u, slope):
+    """S(q) - S0 - s q: of -pi (r+u)^2 (z'+slope) the terms of second and third order in u, slope (..., n_points)."""
+    r, _, dz = model.rest
+    return -np.pi*((u*u*(dz + slope) + 2*r*u*slope) @ (model.area/(2*np.pi*model.reference_radius)))
+
+
+def extra_volume(model, motion):
+    """(n_samples,) m3: S(q) - S0 - s q of motions (n_samples, n_basis)."""
+    n = len(model.area)
+    radial, slopes = model.fields[:, :n], model.fields[:, 2*n:]
+    return np.concatenate([_extra(model, part @ radial, part @ slopes)
+                           for part in np.split(motion, np.arange(1000, len(motion), 1000))])

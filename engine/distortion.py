@@ -137,15 +137,19 @@ def _ratio(a, b):
 
 def _pressure(design, system, basis, task, omega, solved):
     """Pressure (n_freq, n_comp-1) at the listener: of the motion, and of the quadratic part of the swept volume."""
-    listener = design.listener
-    flat = omega[:, 1:].ravel()
-    T = transfer(system, basis, flat/(2*np.pi), listener.distance, listener.angle)
-    linear_part = np.sum(T.reshape(*omega[:, 1:].shape, -1)*solved.motion[:, 1:], axis=-1)
+    later = omega[:, 1:]
+    T, monopole = listening(system, basis, later.ravel(), design.listener)
+    linear_part = np.sum(T.reshape(*later.shape, -1)*solved.motion[:, 1:], axis=-1)
     extra = harmonic.components(task, solved.extremes.extra_volume[..., None])[:, 1:, 0]
-    k, d = omega[:, 1:]/system.air.sound_speed, listener.distance
-    monopole = -omega[:, 1:]**2*system.air.density*np.exp(-1j*k*d)/(2*np.pi*d)
-    absorbed = 10**(-system.air.absorption(omega[:, 1:]/(2*np.pi))*d/20)
-    return (linear_part + monopole*absorbed*extra)*task.audible
+    return (linear_part + monopole.reshape(later.shape)*extra)*task.audible
+
+
+def listening(system, basis, omega, listener):
+    """Pressure at the listener per unit of each basis vector (n, n_basis) Pa/m, and per unit of volume (n,) Pa/m3."""
+    k, d = omega/system.air.sound_speed, listener.distance
+    absorbed = 10**(-system.air.absorption(omega/(2*np.pi))*d/20)
+    monopole = -omega**2*system.air.density*np.exp(-1j*k*d)/(2*np.pi*d)*absorbed
+    return transfer(system, basis, omega/(2*np.pi), d, listener.angle), monopole
 
 
 def _conditions(design, system, f, order, solved):

@@ -57,13 +57,13 @@ def right_side(task, d, x, rows, single=False):
     """Right side (n, n_comp, size) of the linear part: drive d less the nonlinear remainder at states x."""
     n_basis = len(task.static)
     model, theta = (task.single, task.theta[::2]) if single else (task.model, task.theta)
-    return _right(task, d, *remainder(model, x[..., :n_basis], x[..., n_basis:], theta, len(task.free) > 0), rows)
+    return right_part(task, d, *remainder(model, x[..., :n_basis], x[..., n_basis:], theta, len(task.free) > 0), rows)
 
 
 def unmoved(task, drive, rows):
     """Right side for a drive (n, n_comp) where nothing moves."""
     shape = drive.shape
-    return _right(task, drive, np.zeros((*shape, len(task.static))), np.zeros((*shape, len(task.model.functions))),
+    return right_part(task, drive, np.zeros((*shape, len(task.static))), np.zeros((*shape, len(task.model.functions))),
                   rows)
 
 
@@ -94,7 +94,7 @@ def remainder(model, motion, line, theta, charged):
     return force, charge
 
 
-def _right(task, d, N, E, rows):
+def right_part(task, d, N, E, rows):
     """Right side (n, n_comp, size) of the linear part for a drive d and remainders N of force and E of charge."""
     model, n_basis = task.model, len(task.static)
     right = np.zeros((*N.shape[:2], n_basis + len(task.free)), complex)

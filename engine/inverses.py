@@ -11,6 +11,7 @@ from engine.motion import dynamic_stiffness
 from engine.radiation_tables import chebyshev_matrix, chebyshev_nodes
 
 SEPARATION = 1.5         # modes above this multiple of a group's highest frequency are eliminated
+AT_A_TIME = 400          # inverses of a group
 WORTH = 0.8              # of the modes: if more resonate than that, all are inverted
 
 
@@ -28,7 +29,8 @@ def fill(out, places, system, basis, reduced, omega, free):
         if weights is None:
             out[places[start:stop]] = np.linalg.inv(Z)
         elif n_low > WORTH*len(modes):
-            out[places[start:stop]] = np.linalg.inv(_between(weights, Z))
+            for at, w in _pieces(places[start:stop], weights):
+                out[at] = np.linalg.inv(_between(w, Z))
         else:
             line = len(basis.shapes) + np.arange(len(free))
             order = np.concatenate([np.arange(n_low), line, np.arange(n_low, len(basis.shapes))])
@@ -48,6 +50,11 @@ def _nodes(system, omega):
     return omega[0] + np.ptp(omega)*places, chebyshev_matrix(at, k) @ to_coefficients
 
 
+def _pieces(places, weights):
+    """Consecutive pieces of places (n,) and weights (n, k)."""
+    return [(places[i:i + AT_A_TIME], weights[i:i + AT_A_TIME]) for i in range(0, len(places), AT_A_TIME)]
+
+
 def _between(weights, stack):
     """Values (n, ...) at other frequencies of a stack (k, ...) of complex values at the nodes."""
     kind = stack.real.dtype
@@ -62,17 +69,19 @@ def _eliminate(out, places, Z, weights, order, n):
     behind = np.linalg.inv(Z[:, n:, n:])
     passed = behind @ coupling
     S = Z[:, :n, :n] - coupling.transpose(0, 2, 1) @ passed
-    T = np.linalg.inv(_between(weights, S)).astype(np.complex64)
-    X, G = (_between(weights, part.astype(np.complex64)) for part in (passed, behind))
-    cells = np.empty((len(places), *Z.shape[1:]), np.complex64)
-    XT = X @ T
-    cells[:, :n, :n] = T
-    cells[:, n:, :n] = -XT
-    cells[:, :n, n:] = -XT.transpose(0, 2, 1)
-    cells[:, n:, n:] = XT @ X.transpose(0, 2, 1)
-    cells[:, n:, n:] += G
+    passed, behind = passed.astype(np.complex64), behind.astype(np.complex64)
     back = np.argsort(order)
-    out[places] = cells if np.all(np.diff(order) > 0) else cells[:, back[:, None], back]
+    for at, w in _pieces(places, weights):
+        T = np.linalg.inv(_between(w, S)).astype(np.complex64)
+        X, G = _between(w, passed), _between(w, behind)
+        cells = np.empty((len(at), *Z.shape[1:]), np.complex64)
+        XT = X @ T
+        cells[:, :n, :n] = T
+        cells[:, n:, :n] = -XT
+        cells[:, :n, n:] = -XT.transpose(0, 2, 1)
+        cells[:, n:, n:] = XT @ X.transpose(0, 2, 1)
+        cells[:, n:, n:] += G
+        out[at] = cells if np.all(np.diff(order) > 0) else cells[:, back[:, None], back]
 
 
 def linear_part(system, basis, reduced, omega, free):

@@ -27,6 +27,7 @@ circuit source linear modes bands motion resonances
 response window
 cycle inverses harmonic balance distortion
 distortion_view
+blocks signals
 limits
 summary
 """.split()
