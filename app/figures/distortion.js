@@ -89,12 +89,9 @@ const bootDistortion = (m, page) => {
   let asking = null, asked = null
   const askSettled = () => {
     if (page.f === asked) return
+    asked = page.f
     clearTimeout(asking)
-    asking = setTimeout(() => {
-      if (!here()) return
-      asked = page.f
-      t.ask(page, { settled: page.f })
-    }, SETTLED)
+    asking = setTimeout(() => t.ask(page, { settled: page.f }), SETTLED)
   }
 
   const draw = () => {

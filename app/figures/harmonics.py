@@ -59,7 +59,7 @@ class Curves:
         at = frequency_ticks(*view.band)
         at = at if len(at) <= NAMED else at[[theme.tick(f)[0] in "15" for f in at]]
         self.axes.set((np.log10(at), [theme.tick(f) for f in at]), percent_steps(*PERCENT), PERCENT,
-                      f"{LAWS[self.law]}: THD and harmonics, % of the total", "Frequency, Hz")
+                      f"{LAWS[self.law]}, % of the total", "Frequency, Hz")
         found, start = view.found.get(self.law), self.axes.x_range.start
         fault = view.faults.get(self.law, "")
         self.fault.data = {"x": [start] * bool(fault), "y": [PERCENT[1]] * bool(fault), "text": lines_of(fault)[:1]}

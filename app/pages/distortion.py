@@ -2,8 +2,11 @@
 
 from pathlib import Path
 
+import panel as pn
+
 from app.figures.distortion import DistortionBoard
 from app.harmonics import PAGE, Harmonics
+from app.listen import Listen
 
 PLACES_CSS = (Path(__file__).parent.parent / "distortion.css").read_text(encoding="utf-8")
 
@@ -23,7 +26,7 @@ class DistortionPage:
     def __init__(self, session, response, harmonics=None):
         self.session, self._response = session, response
         self.harmonics = harmonics or Harmonics(session)
-        self.board = None
+        self.board = self.listen = None
         session.param.watch(self.turn, "page")
         session.param.watch(self.show, ["problem", "overview"])
         watch = self.harmonics.param.watch
@@ -44,6 +47,8 @@ class DistortionPage:
         if self.board is not None:
             with self._response.board.in_one():
                 self.board.plots.visible = here
+            self.listen.visible = here
+        self._response.widen(here)
         self.show()
 
     def show(self, *events):
@@ -84,6 +89,8 @@ class DistortionPage:
         self.board = DistortionBoard(self._response.board, PLACES_CSS)
         self.board.plots.css_classes = ["region-curves-part"]
         self._response.add(self.board.plots, styled=True)
+        self.listen = Listen(self.session.state, pn.state.curdoc)
+        self._response.view.append(self.listen)
         self.board.hold(self.harmonics.held)
         self.show_map()
         self.show_series()

@@ -56,6 +56,12 @@ class ResponsePage:
             part.stylesheets = [PART_CSS]
         self._whole.children = [*self._whole.children, part]
 
+    def widen(self, wide):
+        """Whether the strip reaches across the whole width, nothing standing at its side."""
+        classes = ["region-plots", "wide"] if wide else ["region-plots"]
+        if self._whole.css_classes != classes:
+            self._whole.css_classes = classes
+
     def show(self, *events):
         """Show the last good overview, and say in words why a newer design is not shown."""
         session = self.session

@@ -226,16 +226,17 @@ def test_a_map_is_computed_stopped_and_becomes_stale(monkeypatch):
 
 def test_the_page_is_built_when_first_shown(monkeypatch):
     monkeypatch.setattr(DistortionBoard, "show", lambda self, view: shown.append(view))
-    shown = []
+    shown, widened = [], []
 
     async def steps(session, harmonics, fakes, until):
         response = ResponsePage.__new__(ResponsePage)
-        response.board, response.add = Board(), lambda part, styled=False: None
+        response.board, response.add, response.view = Board(), lambda part, styled=False: None, []
+        response.widen = widened.append
         page = DistortionPage(session, response, harmonics)
         assert page.board is None
         session.page = "distortion"
-        assert page.board is not None and page.board.plots.visible
+        assert page.board is not None and page.board.plots.visible and response.view == [page.listen]
         await until(lambda: shown and shown[-1].count == FINE)
         session.page = "response"
-        assert not page.board.plots.visible
+        assert not page.board.plots.visible and not page.listen.visible and widened == [True, False]
     run_with_harmonics(steps, monkeypatch)
