@@ -102,6 +102,7 @@ function save({filename, bytes}) {
 
 export function render({model}) {
   const send = (message) => model.send_msg(message)
+  const [lowest, highest] = model.tones
   const sound = player(() => show_play(),
     () => write(fault, "The browser gives no sound output. Connect one, then press play again."))
   let shown = null, heard = 0, chosen = model.versions[0][0]
@@ -111,7 +112,7 @@ export function render({model}) {
     ...model.signals.map(([value]) => make("option", {value, textContent: value})))
   const entries = ["frequency", "second frequency"].map((words, place) => {
     const entry = make("input", {type: "text", id: `frequency-${place}`, className: "entry", autocomplete: "off", spellcheck: false,
-      title: "10 Hz to 7 kHz; empty: at the cursor"})
+      title: `${lowest} Hz to ${highest / 1000} kHz; empty: at the cursor`})
     entry.addEventListener("input", () => { entry.own = entry.value.trim() !== "" })
     entry.addEventListener("change", () => { if (!entry.own) { follow() } })
     entry.addEventListener("keydown", (event) => { if (event.key === "Enter") { ask() } })
@@ -120,9 +121,9 @@ export function render({model}) {
   const cursor = window.Bokeh.documents[0]?.get_model_by_name("cursor")
   const follow = () => {
     const at = cursor?.data.frequency[0] ?? model.cursor ?? 440
-    const values = [at, 8 * at > 7000 ? at / 8 : 8 * at]
+    const values = [at, 8 * at > highest ? at / 8 : 8 * at]
     entries.forEach(({entry}, place) => {
-      if (!entry.own) { entry.value = hertz(Math.min(Math.max(values[place], 10), 7000)) }
+      if (!entry.own) { entry.value = hertz(Math.min(Math.max(values[place], lowest), highest)) }
     })
   }
   const file = make("input", {type: "file", id: "wav", accept: ".wav,audio/wav,audio/x-wav", className: "file"})
@@ -290,5 +291,5 @@ export function render({model}) {
       + "loudspeaker, wear hearing protection as the local rules ask."}),
     matched,
     make("p", {className: "quiet", textContent: "The clip's largest value drives the film with the design's amplitude. Level: r.m.s. "
-      + "at the listener over the loudest 0.4 s, re 20 µPa. Sound above 7.5 kHz is left out."}))
+      + "at the listener over the loudest 0.4 s, re 20 µPa. Sound above 7.5 kHz is left out; small loudspeakers leave out low tones."}))
 }

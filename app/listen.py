@@ -38,6 +38,7 @@ class Listen(JSComponent):
     cursor = param.Number(default=None, allow_None=True, doc="Hz at which tones begin, unless the browser has a cursor")
     signals = param.List(constant=True, doc="[name, number of frequencies] of what can be listened to")
     versions = param.List(constant=True, doc="[name, words] of what can be heard")
+    tones = param.List(default=list(clips.TONES), constant=True, doc="[lowest, highest] frequency of a tone, Hz")
     own = param.String(default=OWN, constant=True)
     piece = param.Integer(default=PIECE, constant=True, doc="bytes of a file to send at a time")
     for_a_tone = param.String(default=hearing.FOR_A_TONE, constant=True)

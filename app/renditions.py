@@ -30,9 +30,10 @@ class Renditions:
             self.clip.name == clip.name and np.array_equal(self.clip.samples, clip.samples)))
 
     def want(self, first):
-        """Put every version that is not there on the queue, one of them first."""
+        """Put every version that is not there on the queue, one of them first, then the one that takes the least time."""
         self.faults = {} if self.clip.frequency else {"compensated": FOR_A_TONE}
         self.queue = [name for name in VERSIONS if name not in self.done and name not in self.faults]
+        self.prefer("undistorted")
         self.prefer(first)
 
     def prefer(self, version):

@@ -1,4 +1,4 @@
-"""Each version asks the engine for what it is called; the engine is a stand-in that shows what it was asked."""
+"""Each version asks the engine for what it is called: a stand-in that shows what it was asked, and once the engine itself."""
 
 import numpy as np
 import pytest
@@ -27,7 +27,7 @@ def asked(monkeypatch):
                       "told": (progress, stop)})
         return 2.0 * samples
 
-    monkeypatch.setattr(engine, "render", render, raising=False)
+    monkeypatch.setattr(engine, "render", render)
     monkeypatch.setattr(engine, "compensated_drive", lambda design, frequency: Drive())
     return calls
 
@@ -64,3 +64,13 @@ def test_what_cannot_be_had_is_said_in_the_engines_words(asked, monkeypatch):
         heard(Design().with_values({"drive.amplitude": 1200.0}), clips.tone(100.0), "square-root", max, min)
     assert asked == []
     assert set(hearing.VERSIONS) == {"sine", "square-root", "compensated", "undistorted"}
+
+
+def test_an_undistorted_tone_has_the_level_of_the_response():
+    """The engine itself, by another way: its linear response at the tone's frequency. Coming on, the tone is a little louder."""
+    design = Design()
+    made = heard(design, clips.tone(300.0), "undistorted", lambda part: None, lambda: False)
+    expected = float(engine.response(design, np.array([300.0])).level_db[0])
+    steady = made.pressure[48000:96000].astype(float)
+    assert 20 * np.log10(np.sqrt(np.mean(steady**2)) / 20e-6) == pytest.approx(expected, abs=0.02)
+    assert expected - 0.01 < made.sound.level_db < expected + 0.1
