@@ -67,7 +67,7 @@ def test_what_cannot_be_had_is_said_in_the_engines_words(asked, monkeypatch):
 
 
 def test_an_undistorted_tone_has_the_level_of_the_response():
-    """The engine itself, by another way: its linear response at the tone's frequency. Coming on, the tone is a little louder."""
+    """The engine itself, by another way: its linear response there. Coming on, the tone is a little louder."""
     design = Design()
     made = heard(design, clips.tone(300.0), "undistorted", lambda part: None, lambda: False)
     expected = float(engine.response(design, np.array([300.0])).level_db[0])
