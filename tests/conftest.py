@@ -8,3 +8,8 @@ from threadpoolctl import threadpool_limits
 def one_blas_thread():
     with threadpool_limits(1):
         yield
+
+
+def pytest_collection_modifyitems(items):
+    """Browser tests last: their driver leaves an event loop running in the process, where others start one."""
+    items.sort(key=lambda item: "browser" in item.path.parts)

@@ -20,6 +20,7 @@ HERE = Path(__file__).parent
 SCRIPTS = ("parcel", "html", "format", "reading", "words", "spine", "phasor", "section", "gallery", "save", "cursor", "rest",
            "pages", "boot")
 SENT = ("level", "rows", "motion", "shapes", "nodes", "gallery", "moving", "still")
+UNSEEN = ("motion", "shapes", "nodes", "moving")      # what no other page needs
 WORDS = ("strip", "foot", "changes")
 PLOTS = ("level", "share", "phasor", "section", "gallery")
 
@@ -103,14 +104,17 @@ class Board:
         code = "\n".join([f"const models = {{{', '.join(models)}}}", "{", *parts, "}"])
         self._spine.level.js_on_change("inner_width", CustomJS(args=models, code=code))
 
-    def show(self, overview):
-        """Replace all data by an Overview's; the cursor keeps its frequency, at first it takes the highest peak."""
+    def show(self, overview, seen=True):
+        """Replace all data by an Overview's; the cursor keeps its frequency, at first it takes the highest peak.
+
+        Where another page is in front (not ``seen``), only what that page shows too is replaced: call again when it is left.
+        """
         fresh = columns(overview)
         with self.in_one():
             self._overview = overview
-            self._spine.show(overview, fresh)
+            self._spine.show(overview, fresh, seen)
             for name, sent in self._sent.items():
-                if name != "level":
+                if name != "level" and (seen or name not in UNSEEN):
                     sent.data = getattr(fresh, name)
             if not len(self.cursor.data["frequency"]):
                 self.cursor.data = {"frequency": [first_cursor(overview)]}

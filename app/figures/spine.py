@@ -96,11 +96,12 @@ class Spine:
         plot.add_layout(cursor)
         return cursor
 
-    def show(self, overview, columns):
-        """Replace the data of both plots."""
+    def show(self, overview, columns, seen=True):
+        """Replace the data of both plots; the map only where it is ``seen``."""
         self.level_source.data = columns.level
-        self.share_source.data = columns.share
-        self.veil_source.data = columns.veil
+        if seen:
+            self.share_source.data = columns.share
+            self.veil_source.data = columns.veil
         self._frequency_axis(overview.band, columns.still["n_rows"][0])
         self._level_axis(overview, columns.level)
         self._mark_estimate(overview)

@@ -24,7 +24,7 @@ class ResponsePage:
     """
 
     def __init__(self, session, dark=False):
-        self.session = session
+        self.session, self._behind = session, False
         self.controls = Controls(session.state)
         self.board = Board(dark)
         self.board.on_painted(session.painted)
@@ -32,6 +32,7 @@ class ResponsePage:
         self.view = pn.Column(self.controls.view, self.plots(), css_classes=["page"], stylesheets=[PAGE_CSS], margin=0,
                               sizing_mode="stretch_both")
         session.param.watch(self.show, ["overview", "problem"])
+        session.param.watch(self._return, "page")
         session.param.watch(lambda event: self.board.hold(event.new), "held")
         for key, act in {"h": session.hold, "u": session.state.undo, "r": session.state.redo}.items():
             self.board.on_key(key, act)
@@ -66,10 +67,17 @@ class ResponsePage:
         """Show the last good overview, and say in words why a newer design is not shown."""
         session = self.session
         if session.overview is not None and (not events or any(event.name == "overview" for event in events)):
-            self.board.show(session.overview)
+            self._behind = session.page != "response"
+            self.board.show(session.overview, seen=not self._behind)
         problem = session.problem
         self.controls.blame(problem and problem.key, problem.text if problem else "")
         self.board.dim(problem and problem.text)
+
+    def _return(self, *_):
+        """Another page was left: show what was left out behind it."""
+        if self._behind and self.session.page == "response":
+            self._behind = False
+            self.board.show(self.session.overview)
 
     def set_dark(self, dark):
         """Light or dark."""

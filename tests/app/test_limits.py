@@ -248,3 +248,16 @@ def test_hold_reaches_the_page_of_the_limits(page):
     assert session.held_limits is not None and len(made.board._window.held.data["bias_kv"]) > 10
     session.hold()
     assert session.held_limits is None and len(made.board._window.held.data["bias_kv"]) == 0
+
+
+def test_what_no_other_page_shows_is_sent_when_the_first_is_back(page):
+    session, response, _, _ = page
+    sent = response.board._sent
+    before = sent["motion"].data
+    session.page = "limits"
+    session.state.groups["drive"].bias = 2.0
+    assert sent["motion"].data is before and len(sent["level"].data["frequency"]) == len(session.overview.response.frequency)
+    session.page = "response"
+    expected = columns(session.overview)
+    np.testing.assert_array_equal(sent["motion"].data["re"], expected.motion["re"])
+    np.testing.assert_array_equal(response.board._spine.share_source.data["image"][0], expected.share["image"][0])
