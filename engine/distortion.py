@@ -16,6 +16,7 @@ MOST_HARMONICS = 32
 MOST_FREQUENCIES = 5000
 MOST_NUMBERS = 30_000_000     # of the inverses kept at a time
 LAWS = ("sine", "square-root")
+COMPENSATION_ROUNDS, COMPENSATION_STEP = 8, 0.01    # of Newton's method; its differences over the drive's fundamental
 
 
 @dataclass(frozen=True)
@@ -193,7 +194,8 @@ class CompensatedDrive:
 def compensated_drive(design, frequency, amplitude=None, n_harmonics=5, tolerance=1e-4):
     """The periodic drive near the design's law whose pressure has no harmonic 2 ... n_harmonics.
 
-    Each round takes the harmonics that are heard, over the linear response at their frequencies, off the drive.
+    Newton's method on the drive's harmonics, with differences of the full balance: at a resonance one harmonic of the drive
+    moves all those of the sound.
     Returns: CompensatedDrive; achieved is False, with the reason, where it does not settle or needs more than 20 kV.
     """
     f = _checked(frequency, n_harmonics)[:1]
@@ -201,47 +203,39 @@ def compensated_drive(design, frequency, amplitude=None, n_harmonics=5, toleranc
     n = max(n_harmonics + 3, 8)
     n_samples = max(SAMPLES, 8*n)
     phase, order = 2*np.pi*np.arange(n_samples)/n_samples, np.arange(n + 1)
-    drive = _components(waveform(design.drive, phase), phase, order)[None]
-    small = design.with_values({"drive.law": "sine"})
-    system, basis = basis_for(design, _top(f))
-    from_volt = _per_volt(small, system, basis, f[0]*order[1:])
-    found = _solve(design, f, order, phase, drive, _top(f))
-    for _ in range(25):
-        p = found.harmonic_pressure[0]
-        if not found.converged[0] or found.thd[0] < tolerance:
-            break
-        wrong = p.copy()
-        wrong[0] = 0
-        wrong[n_harmonics:] = 0
-        if np.linalg.norm(wrong) < tolerance*np.linalg.norm(p):
+    drive = _components(waveform(design.drive, phase), phase, order)
+    for _ in range(COMPENSATION_ROUNDS):
+        step, residual = _compensation(design, f, order, phase, drive, n_harmonics)
+        if not residual > tolerance:          # reached, or no number
             break
         drive = drive.copy()
-        drive[0, 1:] -= np.where(np.abs(from_volt) > 0, wrong/np.where(from_volt == 0, 1, from_volt), 0)
-        found = _solve(design, f, order, phase, drive, _top(f))
+        drive[2:n_harmonics + 1] -= step
+    found = _solve(design, f, order, phase, drive[None], _top(f))
     p = found.harmonic_pressure[0]
     residual = float(_ratio(np.linalg.norm(p[1:n_harmonics]), np.linalg.norm(p)))
-    top = float(np.max(np.abs(design.drive.bias + np.real(np.exp(1j*np.outer(phase, order)) @ drive[0]))))
+    top = float(np.max(np.abs(design.drive.bias + np.real(np.exp(1j*np.outer(phase, order)) @ drive))))
     why = ""
     if not found.converged[0] or residual > 10*tolerance:
         why = "No drive was found that silences the harmonics: lower the amplitude."
     elif top > 20e3:
         why = f"It would take {top/1e3:.3g} kV, more than 20 kV."
-    return CompensatedDrive(float(f[0]), frozen(drive[0].copy()), top, residual, not why, why, found)
+    return CompensatedDrive(float(f[0]), frozen(drive.copy()), top, residual, not why, why, found)
 
 
-def _per_volt(design, system, basis, frequency):
-    """Linear pressure (n,) Pa/V at frequencies; 0 above the basis."""
-    from_motion = np.zeros(len(frequency), complex)
-    known = frequency <= system.frequency_max*1.5
-    task = harmonic.problem(system, basis, np.concatenate([np.zeros((int(known.sum()), 1)),
-                                                           2*np.pi*frequency[known, None]], axis=1), np.zeros((1, 2)))
-    n_basis = len(basis.shapes)
-    volt = np.zeros((known.sum(), 2), complex)
-    volt[:, 1] = 1.0
-    new = harmonic.linear_answer(task, volt, np.arange(len(volt)))
-    T = transfer(system, basis, frequency[known], design.listener.distance, design.listener.angle)
-    from_motion[known] = np.sum(T*new[:, 1, :n_basis], axis=1)
-    return from_motion
+def _compensation(design, f, order, phase, drive, n_harmonics):
+    """(Newton step (n_harmonics-1,) V of the drive's harmonics from the second on, harmonics heard over the total)."""
+    k, small = n_harmonics - 1, COMPENSATION_STEP*max(abs(drive[1]), 1e-9)
+    rows = np.repeat(drive[None], 2*k + 1, axis=0)
+    each = np.arange(k)
+    rows[1 + each, 2 + each] += small
+    rows[1 + k + each, 2 + each] += 1j*small
+    found = _solve(design, np.repeat(f, len(rows)), order, phase, rows, _top(f))
+    p = found.harmonic_pressure
+    if not found.converged.all():
+        return np.zeros(k, complex), np.nan
+    heard = np.concatenate([p.real[:, 1:n_harmonics], p.imag[:, 1:n_harmonics]], axis=1)
+    step = np.linalg.lstsq((heard[1:] - heard[0]).T/small, heard[0], rcond=1e-10)[0]
+    return step[:k] + 1j*step[k:], float(_ratio(np.linalg.norm(heard[0]), np.linalg.norm(p[0])))
 
 
 @dataclass(frozen=True)

@@ -46,7 +46,7 @@ def _nodes(system, omega):
     if k >= len(omega):
         return omega, None
     places, to_coefficients = chebyshev_nodes(k)
-    at = (omega - omega[0])/np.ptp(omega)
+    at = (omega - omega[0])/(np.ptp(omega) or 1.0)          # all at one place where they are all the same
     return omega[0] + np.ptp(omega)*places, chebyshev_matrix(at, k) @ to_coefficients
 
 
