@@ -102,6 +102,11 @@ export function render({model, el}) {
   }
   model.on("msg:custom", (message) => {
     if (message.link) { show_link(message.link) }
+    if (message.address) {
+      const url = new URL(window.location.href)
+      url.searchParams.set("d", message.address)
+      history.replaceState(null, "", url)
+    }
     if (message.download) { download(message.download) }
   })
 

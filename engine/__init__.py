@@ -5,16 +5,10 @@ Hz is the leading axis of every result; the axis z points from the frame plane t
 the listener are positive. Inputs and results are frozen dataclasses holding read-only arrays.
 """
 
+from engine.compensation import CompensatedDrive, compensated_drive
 from engine.design import Air, Centre, Design, Drive, Electrodes, Film, Geometry, Listener, Rear
 from engine.designfile import load, save
-from engine.distortion import (
-    CompensatedDrive,
-    Distortion,
-    Intermodulation,
-    compensated_drive,
-    distortion,
-    intermodulation,
-)
+from engine.distortion import Distortion, distortion
 from engine.distortion_view import (
     AmplitudeSeries,
     DistortionMap,
@@ -24,6 +18,7 @@ from engine.distortion_view import (
     distortion_view,
 )
 from engine.errors import InvalidDesign, NoRestState, NotConverged, Stopped
+from engine.intermodulation import Intermodulation, intermodulation
 from engine.limits import Excursion, Judgement, LimitsView, Margin, breakdown_band, excursion, limits_view, margins
 from engine.modes import Modes, modes
 from engine.response import Response, prepare, response

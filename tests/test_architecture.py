@@ -26,7 +26,7 @@ rear
 circuit source linear modes bands motion resonances
 response window
 cycle inverses harmonic balance distortion
-distortion_view
+compensation intermodulation distortion_view
 blocks signals
 limits
 summary

@@ -14,6 +14,7 @@ from app.session import PAGES, samples
 
 BESIDE = Path(__file__).parent.parent
 BUSY_AFTER = 0.3                  # s: what is computed sooner is not said to be computing
+KEPT_AFTER = 1.0                  # s of rest after which the address carries the design: a reload loses nothing
 LARGEST_FILE = 64 * 1024          # bytes; the browser looks before it sends, so that the connection lives
 
 
@@ -42,11 +43,13 @@ class Header(JSComponent):
     _stylesheets: ClassVar = [(BESIDE / "header.css").read_text(encoding="utf-8")]
 
     def __init__(self, session, product):
-        self._session, self._later = session, None
+        self._session, self._later, self._keeping = session, None, None
         super().__init__(product=product, samples=samples(), margin=0, sizing_mode="stretch_width", **self._seen())
         session.state.param.watch(self._show, ["design", "held", "can_undo", "can_redo", "dirty"])
         session.param.watch(self._show, "page")
         session.param.watch(self._show_busy, "busy")
+        session.state.param.watch(self._keep, "design")
+        session.on_close(self._rest)
 
     def _seen(self):
         """What the header shows of the session."""
@@ -74,6 +77,24 @@ class Header(JSComponent):
             self.busy = self._session.busy
         else:
             document.add_next_tick_callback(lambda: self.param.update(busy=self._session.busy))
+
+    def _keep(self, *_):
+        """Put the design into the page's address, once nothing moves any more."""
+        self._rest()
+        document = pn.state.curdoc
+        if document is not None:
+            loop = asyncio.get_running_loop()
+            self._keeping = loop.call_later(KEPT_AFTER, document.add_next_tick_callback, self._send_address)
+
+    def _send_address(self):
+        """The address that opens the design as it is now."""
+        self._send_msg({"address": self._session.state.link()})
+
+    def _rest(self):
+        """Nothing is to be kept any more, or something newer."""
+        if self._keeping is not None:
+            self._keeping.cancel()
+            self._keeping = None
 
     def _handle_msg(self, message):
         """Do what the browser asks; a refusal (InvalidDesign is a ValueError) is told in words."""

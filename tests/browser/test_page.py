@@ -173,6 +173,13 @@ def test_a_link_opens_the_same_design(visit, visitor):
     assert_shows(other, design)
 
 
+def test_a_reload_loses_nothing(visit):
+    visit.changed(lambda: visit.type("film.prestretch", "1.4"))
+    visit.page.wait_for_function("window.location.search.includes('d=')")
+    visit.open(visit.page.url)
+    assert_shows(visit, Design().with_values({"film.prestretch": 1.4}))
+
+
 def test_a_bad_link_is_said_and_leaves_the_address(visitor):
     visit = visitor(at="?d=nonsense")
     visit.page.get_by_text("Copy the whole link again").first.wait_for()

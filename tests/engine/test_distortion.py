@@ -10,8 +10,10 @@ from scipy.integrate import solve_ivp
 import engine
 from engine import balance, harmonic
 from engine import film as flm
-from engine.distortion import compensated_drive, distortion, intermodulation, waveform
+from engine.compensation import compensated_drive
+from engine.distortion import distortion, waveform
 from engine.errors import InvalidDesign
+from engine.intermodulation import intermodulation
 from engine.response import basis_for
 
 samples = pytest.mark.parametrize("name", ("fern-label", "bench-back", "palm-house-arch"))
