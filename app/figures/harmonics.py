@@ -162,7 +162,7 @@ class Cursor:
         orders = np.arange(1, MOST_BARS + 1)
         decibels = np.arange(-80.0, 1, 20)
         self.bars.set((orders, [str(n) for n in orders]), (decibels, [theme.digits(v) for v in decibels]), DECIBELS,
-                      "Harmonics, dB re total: sine filled, root open", "Harmonic, 1 the fundamental")
+                      "Harmonics, dB: sine filled, root open", "Harmonic, 1 the fundamental")
         turns = np.arange(0.0, 361, 90)
         self.cycle.set((turns, [f"{v:.0f}°" for v in turns]), ([0.5, 1.5, 2.5], ["", "", ""]), (0.0, 3.0),
                        "One cycle", "Phase of the signal")
