@@ -7,6 +7,7 @@ as one small source. The models on the server's side change as ever.
 """
 
 import json
+import math
 from contextlib import contextmanager
 
 import numpy as np
@@ -88,7 +89,10 @@ def packed(values):
             return place if entries.ndim == 1 else {**place, "shape": entries.shape}
         if len(entries) and isinstance(entries[0], np.ndarray):
             return {"each": [column(entry) for entry in entries]}
-        return [entry.item() if isinstance(entry, np.generic) else entry for entry in entries]
+        plain = [entry.item() if isinstance(entry, np.generic) else entry for entry in entries]
+        if any(isinstance(entry, float) and not math.isfinite(entry) for entry in plain):
+            return column(np.array(plain, float))
+        return plain
 
     plain = {key: {name: {c: column(v) for c, v in value.items()} if name == "data" else value
                    for name, value in attributes.items()} for key, attributes in values.items()}

@@ -30,8 +30,9 @@ def solve(K, g):
     return x
 
 
-def newton(film, q, voltage, most=12, settled=SETTLED):
-    """Plain Newton iteration: (state, tangent), or None where it does not converge in a few steps."""
+def newton(film, q, voltage, most=12, settled=SETTLED, within=np.inf):
+    """Plain Newton iteration: (state, tangent), or None where it does not converge in a few steps or strays from q."""
+    start = q
     for _ in range(most):
         energy, g, K = flm.linearise(film, q, voltage)
         step = solve(K, g) if np.isfinite(energy) and np.isfinite(K.sum()) else None
@@ -39,7 +40,7 @@ def newton(film, q, voltage, most=12, settled=SETTLED):
             return None
         q = q - step
         size = np.max(np.abs(step))
-        if not size < film.mesh.edges[-1]:
+        if not size < film.mesh.edges[-1] or np.max(np.abs(q - start)) > within:
             return None
         if size < settled*film.mesh.edges[-1]:
             return q, K
@@ -130,8 +131,8 @@ def march(film, q, K, start, stop, settled=SETTLED):
         near = 0.5*moved + 1e-3*film.mesh.edges[-1]
         voltage = float(np.sqrt(2*(s + step))) if s + step < goal else stop
         with np.errstate(all="ignore"):
-            found = newton(film, q + predicted, voltage, 6, settled) if moved < film.mesh.edges[-1] else None
-        if found is not None and np.max(np.abs(found[0] - q - predicted)) <= near and is_stable(found[1]):
+            found = newton(film, q + predicted, voltage, 6, settled, near) if moved < film.mesh.edges[-1] else None
+        if found is not None and is_stable(found[1]):
             (q, K), s, step = found, s + step, 1.5*step
             yield q, K, voltage, None
         else:
@@ -157,7 +158,7 @@ def unresolved(film, q):
     return np.max(np.abs(last))/film.mesh.edges[-1]
 
 
-def arc(film, q, K, voltage, length=0.1, most=200):
+def arc(film, q, K, voltage, length=0.1, most=200, settled=SETTLED):
     """Points (state, voltage, tangent) along the branch through turning points, by pseudo-arc-length in (q, V^2/2).
 
     Starts at a known point and yields the next ones without end, until `most`, a return to zero voltage or a step that
@@ -172,10 +173,10 @@ def arc(film, q, K, voltage, length=0.1, most=200):
     weight = 1/(len(q)*b**2)
     tangent = _unit(per_s, 1.0, weight, scale)
     for _ in range(most):
-        found = _arc_step(film, q, s, tangent, length, weight, scale)
+        found = _arc_step(film, q, s, tangent, length, weight, scale, settled)
         while found is None and length > 1e-4:
             length /= 2
-            found = _arc_step(film, q, s, tangent, length, weight, scale)
+            found = _arc_step(film, q, s, tangent, length, weight, scale, settled)
         if found is None or found[1] < 0:
             return
         q, s, K, F = found
@@ -192,7 +193,7 @@ def _unit(dq, ds, weight, scale):
     return dq/length, ds/length
 
 
-def _arc_step(film, q, s, tangent, step, weight, scale):
+def _arc_step(film, q, s, tangent, step, weight, scale, settled):
     """Newton on the equilibrium and the distance along the tangent: (state, V^2/2, tangent matrix, load), or None."""
     dq, ds = tangent
     q1, s1 = q + step*dq, s + step*ds
@@ -212,6 +213,6 @@ def _arc_step(film, q, s, tangent, step, weight, scale):
             size = np.max(np.abs(move))/film.mesh.edges[-1]
             if not size < 1:
                 return None
-            if size < SETTLED:
+            if size < settled:
                 return (q1, s1, K, F) if s1 >= 0 else (q1, s1, None, None)
     return None

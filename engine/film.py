@@ -106,7 +106,7 @@ def collect(film, radial, axial):
 
 @dataclass(frozen=True)
 class Strain:
-    """Element-wise r, r', z' and A, B, each (n_elements, order+1)."""
+    """Element-wise r, r', z' and A, B, each (..., n_elements, order+1)."""
 
     r: np.ndarray
     dr: np.ndarray
@@ -116,12 +116,14 @@ class Strain:
 
 
 def strain(film, q):
-    """Strain of a state q (n_dof,)."""
+    """Strain of states q (..., n_dof)."""
     mesh = film.mesh
     where = _places(mesh.n_elements, mesh.order)[2]
-    local = np.concatenate([q, [mesh.edges[0], mesh.edges[-1], 0.0]])[where]
-    dr, dz = local @ reference_derivative(mesh.order).T/mesh.half_length[:, None]
-    return Strain(local[0], dr, dz, dr**2 + dz**2, local[0]**2/mesh.local_square)
+    clamped = np.broadcast_to([mesh.edges[0], mesh.edges[-1], 0.0], (*q.shape[:-1], 3))
+    local = np.concatenate([q, clamped], axis=-1)[..., where]
+    slope = local @ reference_derivative(mesh.order).T/mesh.half_length[:, None]
+    r, dr, dz = local[..., 0, :, :], slope[..., 0, :, :], slope[..., 1, :, :]
+    return Strain(r, dr, dz, dr**2 + dz**2, r**2/mesh.local_square)
 
 
 def surface_energy(film, A, B, voltage, electrodes=True):
@@ -263,7 +265,10 @@ def capacitance(film, q):
 
 
 def cauchy_stress(film, q, voltage):
-    """(sigma1, sigma2) of the film, Maxwell part included, and field, each (n_elements, order+1); Pa, V/m."""
+    """(sigma1, sigma2) of the film, Maxwell part included, and field, each (..., n_elements, order+1); Pa, V/m.
+
+    q (..., n_dof); voltage a number, or (..., 1, 1).
+    """
     e = strain(film, q)
     _, wA, wB, *_ = surface_energy(film, e.A, e.B, voltage, electrodes=False)
     field = voltage*np.sqrt(e.A*e.B)/film.layer_thickness

@@ -2,7 +2,7 @@
 
 from dataclasses import dataclass, replace
 from functools import lru_cache
-from itertools import islice
+from itertools import islice, pairwise
 
 import numpy as np
 import scipy.linalg
@@ -17,7 +17,8 @@ HIGHEST_BIAS = 20e3           # V, the bound of the bias
 N_BIAS, N_MODES = 60, 8
 FIRST_REACH = 100.0           # V
 N_BEYOND = 8                 # points drawn past a turning point
-AIR_EVERY = 8                 # states from one air mass to the next
+KNOWN_EVERY = 8               # states from one whole eigenproblem and air mass to the next
+SPARE = 4                     # shapes beyond the modes wanted, among which they are sought between those
 LAST_TENSION = 2e-3           # of the unbiased one: what the last stable state of a flat film has left
 N_POLYNOMIALS = 24            # of the air's mass: enough for the lowest modes
 
@@ -80,7 +81,7 @@ def _window(design, n_bias, n_modes, reach):
     points = list(_stable_points(film, path, top*along))
     if pull_in is not None and top == pull_in:
         q, K, V, _ = points[-1]
-        points += [(q, K, V, None) for q, V, K in islice(arc(film, q, K, V), N_BEYOND)]
+        points += [(q, K, V, None) for q, V, K in islice(arc(film, q, K, V, settled=DRAWN), N_BEYOND)]
     return _collect(design, film, points, n_modes, n_bias, slack, pull_in, breakdown)
 
 
@@ -128,44 +129,55 @@ def _crossing(film, path, value, level):
 
 
 def _collect(design, film, points, n_modes, n_bias, slack, pull_in, breakdown):
-    judged = [flm.cauchy_stress(film, q, V) for q, _, V, _ in points]
-    strains = [flm.strain(film, q) for q, *_ in points]
-    areas = np.array([(film.area*np.sqrt(e.A*e.B)).ravel() for e in strains])
-    flat = film.areal_capacitance*film.area.ravel()
+    states, volts = np.stack([q for q, *_ in points]), np.array([V for _, _, V, _ in points])
+    s1, s2, field = flm.cauchy_stress(film, states, volts[:, None, None])
+    e = flm.strain(film, states)
+    stretched = (e.A*e.B).reshape(len(points), -1)
+    flat = film.area.ravel()
     return VoltageWindow(
-        bias=frozen(np.array([V for _, _, V, _ in points])),
+        bias=frozen(volts),
         stable=frozen(np.array([i < n_bias or is_stable(K) for i, (_, K, _, _) in enumerate(points)])),
-        centre_height=frozen(np.array([q[0] for q, *_ in points])),
-        peak_field=frozen(np.array([field.max() for *_, field in judged])),
-        least_stress=frozen(np.array([min(s1.min(), s2.min()) for s1, s2, _ in judged])),
-        capacitance=frozen(np.array([flat @ (e.A*e.B).ravel() for e in strains])),
-        field=frozen(np.array([field.ravel() for *_, field in judged])), area=frozen(areas),
-        frequency=frozen(_frequencies(design, film, points, n_modes)),
+        centre_height=frozen(states[:, 0].copy()), peak_field=frozen(field.max(axis=(1, 2))),
+        least_stress=frozen(np.minimum(s1, s2).min(axis=(1, 2))),
+        capacitance=frozen(film.areal_capacitance*(stretched @ flat)), field=frozen(field.reshape(len(points), -1)),
+        area=frozen(flat*np.sqrt(stretched)), frequency=frozen(_frequencies(design, film, points, n_modes)),
         slack_voltage=slack, pull_in_voltage=pull_in, breakdown_voltage=breakdown)
 
 
 def _frequencies(design, film, points, n_modes):
     """(n_points, n_modes) Hz of the lowest modes in air about states on the static mesh; imaginary ones at 0.
 
-    The air's mass changes little along the branch: it is computed at every AIR_EVERY-th state and interpolated between.
+    At every KNOWN_EVERY-th state the whole eigenproblem is solved; between two of them the modes are sought among the
+    lowest shapes of both (Rayleigh-Ritz: second order in what they miss), the air's mass interpolated.
     """
     gas = air.properties(design.air.temperature, design.air.pressure, design.air.relative_humidity)
     behind = rear.from_design(design, gas)
     heavy = behind.faces*gas.density*design.air.load
-    known = sorted({*range(0, len(points), AIR_EVERY), len(points) - 1})
+    known = sorted({*range(0, len(points), KNOWN_EVERY), len(points) - 1})
     masses = {i: np.diag(film.mass) + heavy*_air_mass(film, points[i][0]) for i in known}
-    out = np.empty((len(points), n_modes))
-    for i, (q, K, _, _) in enumerate(points):
-        below = i//AIR_EVERY*AIR_EVERY
-        above = min(below + AIR_EVERY, len(points) - 1)
-        share = (i - below)/max(above - below, 1)
-        M = masses[below] if share == 0 else (1 - share)*masses[below] + share*masses[above]
-        if behind.stiffness:
-            s = flm.swept_volume(film, q)[1]
-            K = K + behind.stiffness*np.outer(s, s)
-        squares = scipy.linalg.eigh(K, M, eigvals_only=True, check_finite=False)[:n_modes]
-        out[i] = np.sqrt(np.maximum(squares, 0))/(2*np.pi)
-    return out
+    stiffness = {i: _with_rear(behind, film, *points[i][:2]) for i in known}
+    whole = {i: scipy.linalg.eigh(stiffness[i], masses[i], check_finite=False) for i in known}
+    squares = np.empty((len(points), n_modes))
+    for i in known:
+        squares[i] = whole[i][0][:n_modes]
+    for below, above in pairwise(known):
+        P = np.concatenate([whole[i][1][:, :n_modes + SPARE].T for i in (below, above)])
+        P = scipy.linalg.qr(P.T, mode="economic", check_finite=False)[0].T
+        ends = [P @ masses[i] @ P.T for i in (below, above)]
+        for i in range(below + 1, above):
+            share = (i - below)/(above - below)
+            K = P @ _with_rear(behind, film, *points[i][:2]) @ P.T
+            squares[i] = scipy.linalg.eigh(K, (1 - share)*ends[0] + share*ends[1], eigvals_only=True,
+                                           check_finite=False)[:n_modes]
+    return np.sqrt(np.maximum(squares, 0))/(2*np.pi)
+
+
+def _with_rear(behind, film, q, K):
+    """The tangent with the air behind the film."""
+    if not behind.stiffness:
+        return K
+    s = flm.swept_volume(film, q)[1]
+    return K + behind.stiffness*np.outer(s, s)
 
 
 def _air_mass(film, q):

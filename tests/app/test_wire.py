@@ -30,7 +30,7 @@ def test_columns_of_all_kinds_arrive():
     rng = np.random.default_rng(7)
     long, image, gaps = rng.normal(size=500).astype(np.float32), rng.normal(size=(3, 70)).astype(np.float32), np.full(9, np.nan)
     data = {"long": long, "image": [image], "lines": [long[:60], long[60:90]], "gaps": gaps, "few": np.arange(4),
-            "words": ["a", "b"], "none": [None, 1.5], "own": [np.float64(2.5)], "empty": []}
+            "words": ["a", "b"], "none": [None, 1.5], "own": [np.float64(2.5)], "empty": [], "lack": [1.0, float("nan")]}
     values = {"a": {"data": data, "visible": True}, "b": {"start": 1.25}}
     text, floats = packed(values)
     back = unpacked(text, floats)
@@ -42,6 +42,7 @@ def test_columns_of_all_kinds_arrive():
     assert list(found["lines"][1]) == long[60:90].tolist() and np.isnan(found["gaps"]).all()
     assert found["few"] == [0, 1, 2, 3] and found["words"] == ["a", "b"] and found["none"] == [None, 1.5]
     assert found["own"] == [2.5] and found["empty"] == [] and len(long) > SMALL
+    assert found["lack"][0] == 1 and np.isnan(found["lack"][1])
 
 
 @pytest.fixture

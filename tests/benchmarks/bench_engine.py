@@ -54,6 +54,21 @@ def main():
                   f"{0.3:8.2f}   {unit*1e3:.1f}")
 
 
+def page():
+    """What the page asks for at every move of a control: the overview of the medium sample, on its own grid."""
+    rng = np.random.default_rng(22)
+    matrix = rng.standard_normal((400, 400))
+    matrix = matrix + matrix.T
+    design = engine.load(SAMPLES/"bench-back.toml")
+    engine.overview(design)
+    with threadpool_limits(1):
+        full, reference = [], []
+        for _ in range(CALLS):
+            full.append(seconds(engine.overview, random_change(design, rng)))
+            reference.append(seconds(scipy.linalg.eigh, matrix))
+    print(f"{'overview':18}{statistics.median(full)/statistics.median(reference):7.2f}   {statistics.median(full)*1e3:.1f} ms")
+
+
 def window():
     """Voltage window of the medium sample: 60 voltages, 8 modes."""
     rng = np.random.default_rng(21)
@@ -70,4 +85,5 @@ def window():
 
 if __name__ == "__main__":
     main()
+    page()
     window()
