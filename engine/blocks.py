@@ -17,11 +17,11 @@ from engine.errors import NotConverged
 
 TABLE_BYTES = 240e6      # of the inverses
 LONGEST = 1.0            # s, of a block
-WINDOW, GUARD = 384, 64          # samples
+WINDOW, GUARD = 384, 32          # samples
 WINDOWS = 6              # of a chunk
 NEAR_BINS = 0.86         # of a window's: the basis ends at 0.8 of them
 TAPER = 600              # samples over which a block begins and ends
-TOLERANCE = 3e-6         # change of the motion in a round, in the norm of the elastic energy
+TOLERANCE = 3e-6         # error of the motion, judged by the rounds' changes, in the norm of the elastic energy
 QUIET = 1e-4             # of the loudest window: tolerances are not asked to be finer
 ROUNDS = 40
 MEMORY = 5
@@ -38,7 +38,7 @@ class Table:
     omega: np.ndarray            # (n_bins,) rad/s, all of the transform's
     above: np.ndarray            # (n_bins - n_comp, n_line): line voltages per volt of source above the basis's top
     near: np.ndarray             # (WINDOWS, n, size, size) complex64: spectra of g, windows apart
-    norm: np.ndarray             # (size,): square roots of stiffness and capacitance
+    norm: np.ndarray             # (size,): square roots of stiffness, 0 for the line
     still: float                 # in that norm, a window's motion that is none: of a millivolt
 
     @property
@@ -67,7 +67,7 @@ def table(system, basis, top, rate):
     n_comp = int(np.searchsorted(omega, 2*np.pi*top, side="right"))
     task = harmonic.problem(system, basis, omega[None, :n_comp], np.zeros((1, n_comp)))
     stiffness = np.abs(np.diagonal(task.model.tangent))
-    norm = np.sqrt(np.concatenate([stiffness, np.diagonal(system.circuit.capacitance)[task.free]]))
+    norm = np.sqrt(np.concatenate([stiffness, np.zeros(len(task.free))]))     # the line follows the motion
     volt = np.linalg.norm((task.static @ task.model.loads[0])*norm[:len(stiffness)])*np.sqrt(WINDOW + GUARD)
     return Table(task, rate, n, omega, _above(system.circuit, task.free, omega[n_comp:]), _near(task, n), norm, 1e-3*volt)
 
@@ -85,9 +85,10 @@ def _near(task, n_samples):
             spectrum[:n_basis - i, 0] = task.static[i, i:]
         wrapped = np.zeros((size - i, WINDOWS, 2*reach), np.float32)
         wrapped[:, :, np.arange(1 - reach, reach)] = scipy.fft.irfft(spectrum, n_samples)[:, lags]
-        g = scipy.fft.rfft(wrapped)[:, :, :n_bins].transpose(1, 2, 0)
-        out[:, :, i, i:] = g
-        out[:, :, i:, i] = g
+        out[:, :, i, i:] = scipy.fft.rfft(wrapped)[:, :, :n_bins].transpose(1, 2, 0)
+        out[:, :, i, :i] = 0
+    for apart in out:
+        apart += np.triu(apart, 1).transpose(0, 2, 1)
     return out
 
 
@@ -207,7 +208,7 @@ class March:
     def _window(self, y0, guess):
         """(state, remainder) of a window from what is known of its state and of the remainder in it."""
         made = self.made
-        y, past = y0, []
+        y, past, before = y0, [], 0.0
         with np.errstate(all="ignore"):
             for _ in range(ROUNDS):
                 r = remainder(made.task, y)
@@ -217,7 +218,10 @@ class March:
                 change, size = np.linalg.norm(step), np.linalg.norm(new[:, made.columns]*made.norm)
                 if not np.isfinite(change):
                     break
-                if change <= TOLERANCE*max(size, QUIET*self.loudest, made.still):
+                # the error that is left shrinks with every round by about as much as the changes did
+                left = change*min(1.0, 3*change/max(before, 1e-300))
+                before = change
+                if left <= TOLERANCE*max(size, QUIET*self.loudest, made.still):
                     self.loudest = max(size, self.loudest)
                     return new, r
                 past = [*past, (step, new)][-MEMORY - 1:]

@@ -1,7 +1,7 @@
 """Inverses of the linear part at many frequencies: the dynamic stiffness and the line's equations that are unknown.
 
-Within half an octave everything but the resonances is smooth: the modes well above it are eliminated at a few Chebyshev
-frequencies, and only the few that resonate are inverted at every frequency.
+Within part of an octave everything but the resonances is smooth: the modes well above and below it are eliminated at a few
+Chebyshev frequencies, and only the few that resonate are inverted at every frequency.
 """
 
 import numpy as np
@@ -10,7 +10,8 @@ from engine import radiation
 from engine.motion import dynamic_stiffness
 from engine.radiation_tables import chebyshev_matrix, chebyshev_nodes
 
-SEPARATION = 1.5         # modes above this multiple of a group's highest frequency are eliminated
+# (frequencies, width of a group of them, ratio to its ends from which on modes are eliminated): narrow if there are many
+GROUPS = ((2000, 2**0.25, 1.35), (0, 2**0.5, 1.7))
 AT_A_TIME = 400          # inverses of a group
 WORTH = 0.8              # of the modes: if more resonate than that, all are inverted
 
@@ -19,22 +20,26 @@ def fill(out, places, system, basis, reduced, omega, free):
     """Fill out[places] (n, size, size) with the inverses at omega (n,) rad/s; size: the basis, then the free line functions."""
     order = np.argsort(omega)
     ascending, places, modes = omega[order], places[order], 2*np.pi*basis.modes.frequency
+    width, ratio = next((width, ratio) for least, width, ratio in GROUPS if len(omega) > least)
     stop = len(omega)
     while stop > 0:
         top = ascending[stop - 1]
-        start = int(np.searchsorted(ascending, top/np.sqrt(2), side="right"))
-        n_low = max(1, int(np.searchsorted(modes, SEPARATION*top)))
+        start = int(np.searchsorted(ascending, top/width, side="right"))
+        first, last = (int(np.searchsorted(modes, at)) for at in (ascending[start]/ratio, top*ratio))
+        first = min(first, len(modes) - 1)
+        last = max(last, first + 1)
         nodes, weights = _nodes(system, ascending[start:stop])
         Z = linear_part(system, basis, reduced, nodes, free)
         if weights is None:
             out[places[start:stop]] = np.linalg.inv(Z)
-        elif n_low > WORTH*len(modes):
+        elif last - first > WORTH*len(modes):
             for at, w in _pieces(places[start:stop], weights):
                 out[at] = np.linalg.inv(_between(w, Z))
         else:
-            line = len(basis.shapes) + np.arange(len(free))
-            order = np.concatenate([np.arange(n_low), line, np.arange(n_low, len(basis.shapes))])
-            _eliminate(out, places[start:stop], Z, weights, order, n_low + len(free))
+            n, size = len(basis.shapes), Z.shape[1]
+            last = n if last == len(modes) else last         # the static corrections go with the highest modes
+            _eliminate(out, places[start:stop], Z, weights, (slice(first, last), slice(n, size)),
+                       (slice(0, first), slice(last, n)))
         stop = start
 
 
@@ -42,7 +47,7 @@ def _nodes(system, omega):
     """(nodes (k,) rad/s, weights (n, k)): from values at the nodes to ascending omega; the frequencies themselves if few."""
     reach = np.ptp(omega)*system.frame_radius/system.air.sound_speed
     # the air's load is of exponential type 2 in k b; 3 more bring the rest below 1e-5
-    k = int(np.ceil(reach + 4*np.cbrt(reach) + 4))
+    k = int(np.ceil(reach + 4*np.cbrt(reach) + 5))
     if k >= len(omega):
         return omega, None
     places, to_coefficients = chebyshev_nodes(k)
@@ -62,26 +67,40 @@ def _between(weights, stack):
     return (weights.astype(kind) @ flat).view(stack.dtype).reshape(-1, *stack.shape[1:])
 
 
-def _eliminate(out, places, Z, weights, order, n):
-    """Fill out[places]: all but the first n unknowns of an order eliminated at the nodes of Z, which is symmetric."""
+def _eliminate(out, places, Z, weights, kept, gone):
+    """Fill out[places]: the unknowns gone (slices) eliminated at the nodes of Z, which is symmetric, the kept inverted."""
+    n = sum(part.stop - part.start for part in kept)
+    order = np.concatenate([np.arange(part.start, part.stop) for part in kept + gone])
     Z = Z[:, order[:, None], order]
     coupling = Z[:, n:, :n]
     behind = np.linalg.inv(Z[:, n:, n:])
     passed = behind @ coupling
     S = Z[:, :n, :n] - coupling.transpose(0, 2, 1) @ passed
     passed, behind = passed.astype(np.complex64), behind.astype(np.complex64)
-    back = np.argsort(order)
     for at, w in _pieces(places, weights):
         T = np.linalg.inv(_between(w, S)).astype(np.complex64)
         X, G = _between(w, passed), _between(w, behind)
-        cells = np.empty((len(at), *Z.shape[1:]), np.complex64)
         XT = X @ T
-        cells[:, :n, :n] = T
-        cells[:, n:, :n] = -XT
-        cells[:, :n, n:] = -XT.transpose(0, 2, 1)
-        cells[:, n:, n:] = XT @ X.transpose(0, 2, 1)
-        cells[:, n:, n:] += G
-        out[at] = cells if np.all(np.diff(order) > 0) else cells[:, back[:, None], back]
+        G += XT @ X.transpose(0, 2, 1)
+        XT *= -1
+        cells = np.empty((len(at), *Z.shape[1:]), np.complex64)
+        _place(cells, T, kept, kept)
+        _place(cells, XT, gone, kept)
+        _place(cells, XT.transpose(0, 2, 1), kept, gone)
+        _place(cells, G, gone, gone)
+        out[at] = cells
+
+
+def _place(cells, block, rows, columns):
+    """Fill the rows and columns (slices) of cells with a block, in their order."""
+    i = 0
+    for row in rows:
+        j = 0
+        for column in columns:
+            down, across = row.stop - row.start, column.stop - column.start
+            cells[:, row, column] = block[:, i:i + down, j:j + across]
+            j += across
+        i += down
 
 
 def linear_part(system, basis, reduced, omega, free):

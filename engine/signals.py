@@ -18,6 +18,7 @@ RATES = (8e3, 192e3)     # Hz
 OVERSAMPLING = 2.5       # of the basis's highest frequency
 MOST_VOLTS = 20e3
 HALF_LENGTH = 24         # of the resampling filter, in periods of its cut-off
+AROUND = HALF_LENGTH + 2         # samples that the filter reaches to either side
 ATTENUATION = 8.6        # its Kaiser window's shape: -86 dB
 
 
@@ -51,9 +52,11 @@ def render(design, samples, rate, progress=None, stop=None, linear=False, volts=
     n = -(-len(samples)*ratio.numerator//ratio.denominator)
     heard = np.zeros(n + made.n_new, np.float32)
     march = blocks.March(made)
+    voltage = drive.voltage(-made.n_context - made.n_new, made.n_samples)
     for start in range(0, n + made.n_new, made.n_new):          # each block gives the sound of the chunk before its own
         _halt(stop)
-        voltage = drive.voltage(start - made.n_context, made.n_samples)
+        later = drive.voltage(start - made.n_context + made.n_samples - made.n_new, made.n_new)
+        voltage = np.concatenate([voltage[made.n_new:], later])
         state = blocks.answer(made, voltage, march.r)
         if start > 0:
             heard[start - made.n_new:start] = blocks.pressure(made, transfer, monopole, state, march.volume)[:len(heard)]
@@ -129,13 +132,17 @@ class _Source:
         if self.linear or (self.filtered and not self.rooted):
             return signal
         if self.filtered:
-            fine = self.scale*resampled(self.samples, 4*up, down, 4*start, 4*count)
-            return resampled(np.sqrt(np.maximum(V**2 + 2*V*fine, 0.0)) - V, 1, 4, 0, count)
+            fine = self._fine(4, start, count)
+            return resampled(np.sqrt(np.maximum(V**2 + 2*V*fine, 0.0)) - V, 1, 4, AROUND, count)
         square = 2*V*signal
         if not self.rooted:
-            fine = self.scale*resampled(self.samples, 2*up, down, 2*start, 2*count)
-            square = square + resampled(fine**2, 1, 2, 0, count)
+            square = square + resampled(self._fine(2, start, count)**2, 1, 2, AROUND, count)
         return np.sqrt(np.maximum(V**2 + square, 0.0)) - V
+
+    def _fine(self, times, start, count):
+        """(times*(count + 2 AROUND),) V of signal at times the internal rate, with what a filter needs on both sides."""
+        up, down = times*self.ratio.numerator, self.ratio.denominator
+        return self.scale*resampled(self.samples, up, down, times*(start - AROUND), times*(count + 2*AROUND))
 
 
 @lru_cache(maxsize=16)

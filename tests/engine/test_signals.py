@@ -2,6 +2,7 @@
 
 import threading
 from dataclasses import replace
+from fractions import Fraction
 
 import numpy as np
 import pytest
@@ -12,7 +13,7 @@ from engine import blocks
 from engine import film as flm
 from engine.errors import InvalidDesign, NotConverged, Stopped
 from engine.response import basis_for
-from engine.signals import render, resampled
+from engine.signals import _Source, render, resampled
 
 RATE = 16000
 
@@ -143,6 +144,19 @@ def test_progress_and_stop():
     calls = []
     with pytest.raises(Stopped):        # in the middle
         render(design, tone(100.0, 0.4), RATE, stop=lambda: calls.append(0) or len(calls) > 5)
+
+
+@pytest.mark.parametrize("law, filtered", (("sine", False), ("sine", True), ("square-root", False), ("square-root", True)))
+def test_source_voltages_do_not_depend_on_the_pieces(law, filtered):
+    """Whole or in pieces, the voltage is the same; slow signals are shaped exactly: sqrt(V0^2 + 2 V0 v) (identity)."""
+    design = sample("bench-back", **{"drive.law": law})
+    source = _Source(design, 0.9*tone(90.0, 0.1), Fraction(75, 64), False, False, filtered)
+    whole = source.voltage(0, 1500)
+    pieces = np.concatenate([source.voltage(start, 300) for start in range(0, 1500, 300)])
+    np.testing.assert_allclose(pieces, whole, rtol=0, atol=1e-9*np.max(np.abs(whole)))
+    signal = 250.0*0.9*resampled(tone(90.0, 0.1), 75, 64, 0, 1500)
+    expected = signal if law == "sine" else np.sqrt(1900.0**2 + 2*1900.0*signal) - 1900.0
+    np.testing.assert_allclose(whole, expected, atol=0.05)
 
 
 @pytest.mark.parametrize("samples, rate, words", (
