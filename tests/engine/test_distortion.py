@@ -150,6 +150,40 @@ def test_pieces_of_the_frequencies_do_not_matter(monkeypatch):
     np.testing.assert_allclose(pieces.harmonic_pressure[loud], whole.harmonic_pressure[loud], rtol=1e-3)
 
 
+def still_film(**changes):
+    """A stiff film with a stiff heavy centre, which a signal of a few hertz moves as the square of the voltage tells."""
+    return sample("bench-back").with_values({
+        "film.shear_modulus": 3e6, "centre.spring_rate": 2e4, "centre.spring_free_height": 0.0115, "rear.kind": "open",
+        "film.loss_factor": 0.0, "centre.spring_loss_factor": 0.0, "air.load": False, "drive.bias": 2000.0,
+        "drive.amplitude": 500.0, **changes})
+
+
+def test_resistance_between_source_and_film_in_numbers():
+    """V0 = 2000 V, v = 500 V, omega R C = 1: ratios of the harmonics of the square of the filtered voltage. The bias
+    passes, the fundamental is taken down by |H|, the second harmonic of a sine by |H|^2 (elementary)."""
+    at_rest = engine.equilibrium(still_film())
+    R = 1/(2*np.pi*5.0*at_rest.capacitance)
+    for law, resistance, expected in (("sine", 0.0, (0.0625, 0.0)), ("sine", R, (0.04419417382, 0.0)),
+                                      ("square-root", R, (0.02047500999, 0.002444595280))):
+        x = np.abs(distortion(still_film(**{"drive.law": law, "drive.source_resistance": resistance}), [5.0]).centre_motion[0])
+        assert x[2]/x[1] == pytest.approx(expected[0], rel=5e-3)
+        assert x[3]/x[1] == pytest.approx(expected[1], rel=5e-3, abs=5e-5)
+
+
+def test_two_tones_through_the_square_law_in_numbers():
+    """V0 = 2000 V, V1 = 400 V, V2 = 100 V: forces in 1600 : 400 : 80 : 5 : 40 : 40 at f1, f2, 2f1, 2f2, f2 - f1, f2 + f1
+    (trigonometric identity), and the sum of the last two over f2's is V1/V0; the sound of a still film has them times f^2."""
+    found = intermodulation(still_film(**{"drive.amplitude": 100.0}), 3.0, 10.0, ratio=4.0)
+    force = {tuple(o): abs(p)/f**2 for o, p, f in zip(found.order, found.pressure, found.frequency, strict=True)}
+    for order, expected in (((0, 1), 400), ((2, 0), 80), ((0, 2), 5), ((-1, 1), 40), ((1, 1), 40)):
+        assert force[order]/force[1, 0] == pytest.approx(expected/1600, rel=0.02)
+    assert (force[-1, 1] + force[1, 1])/force[0, 1] == pytest.approx(400/2000, rel=0.02)
+    assert force[-2, 1] + force[2, 1] < 2e-3*force[0, 1]         # no third order in a square
+    p = {tuple(o): abs(q) for o, q in zip(found.order, found.pressure, strict=True)}
+    assert found.modulation_2 == pytest.approx((p[-1, 1] + p[1, 1])/p[0, 1])
+    assert found.difference_2 == pytest.approx(p[-1, 1]/(p[1, 0] + p[0, 1]))
+
+
 @samples
 def test_facts_of_the_trade(name):
     """Common practice: THD grows with amplitude; a sine distorts more than the square-root law at low frequency, which
@@ -181,6 +215,13 @@ def test_compensated_drive_silences_the_harmonics(frequency):
     assert found.achieved and np.all(p[1:5] < 1e-3*p[0])
     assert np.abs(distortion(design, [frequency]).harmonic_pressure[0, 1]) > 1e-2*p[0]
     assert found.peak_voltage > design.drive.bias
+
+
+def test_compensation_says_when_it_cannot():
+    """Three times the amplitude at a resonance: a reason, the best drive that was found, and finite numbers."""
+    found = compensated_drive(sample("bench-back"), 1500.0, amplitude=1900.0)
+    assert not found.achieved and "lower the amplitude" in found.finding
+    assert found.residual > 1e-3 and 1900.0 < found.peak_voltage < 20e3 and np.all(np.isfinite(found.source_voltage))
 
 
 def test_intermodulation_of_one_tone_is_its_harmonics():
